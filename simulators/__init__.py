@@ -1,0 +1,1 @@
+"""A simulated rig: its physics, and the front panels of its instruments."""

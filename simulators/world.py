@@ -1,0 +1,197 @@
+"""Coil, cryostat, sample, helium and lock-ins, coupled, and brought up to date when looked at."""
+
+from collections.abc import Callable
+from dataclasses import dataclass, field
+
+from simulators.coil import Coil, CoilParameters
+from simulators.cryostat import Stage, StageParameters
+from simulators.helium import HeliumBath, HeliumParameters
+from simulators.lockin import LockIn, LockInParameters
+from simulators.lowpass import NODES_PER_PIECE
+from simulators.noise import NoiseSource
+from simulators.sample import Sample, SampleParameters
+
+_SEGMENT_MAX_S = 20.0
+_PHASE_PER_PIECE = 0.75
+_EVENTS_AT_ONCE_MAX = 100
+
+
+@dataclass(frozen=True, slots=True)
+class GaugeParameters:
+    """A gauge of the helium level, percent."""
+
+    name: str = "helium"
+    noise_percent: float = 0.02
+
+
+@dataclass(frozen=True, slots=True)
+class WorldParameters:
+    """Everything that a simulated rig is made of; SI units."""
+
+    seed: int = 1
+    coil: CoilParameters = field(default_factory=CoilParameters)
+    stage: StageParameters = field(default_factory=StageParameters)
+    sample: SampleParameters = field(default_factory=SampleParameters)
+    helium: HeliumParameters = field(default_factory=HeliumParameters)
+    lock_ins: tuple[LockInParameters, ...] = ()
+    gauges: tuple[GaugeParameters, ...] = ()
+
+
+class World:
+    """The simulated rig's physics.
+
+    Parameters
+    ----------
+    parameters : WorldParameters
+        What it is made of.
+    now : callable
+        Time in seconds, never running backwards. Nothing moves between two calls of `advance`;
+        `advance` integrates from the last call's time to this one's, whatever lies between.
+    """
+
+    def __init__(self, parameters: WorldParameters, now: Callable[[], float]) -> None:
+        self.parameters = parameters
+        self._now = now
+        self._time_s = now()
+        self.coil = Coil(parameters.coil)
+        self.stage = Stage(parameters.stage)
+        self.sample = Sample(parameters.sample)
+        self.helium = HeliumBath(parameters.helium)
+        self.lock_ins = {p.name: LockIn(p, self.noise(p.name)) for p in parameters.lock_ins}
+        self.gauges = {p.name: p for p in parameters.gauges}
+        self._quiet_s = parameters.stage.response_s / 3.0
+        for lock_in in self.lock_ins.values():
+            if lock_in.parameters.measures not in {"longitudinal", "hall"}:
+                raise ValueError(
+                    f"lock-in {lock_in.parameters.name} measures "
+                    f"{lock_in.parameters.measures!r}; allowed are 'longitudinal' and 'hall'"
+                )
+
+    def noise(self, name: str) -> NoiseSource:
+        """The random stream of one instrument."""
+        return NoiseSource(self.parameters.seed, name)
+
+    # -- the truth, for tests and for people who want to compare ---------------------------------
+
+    @property
+    def field_t(self) -> float:
+        """Field at the sample."""
+        self.advance()
+        return self.coil.sample_t
+
+    @property
+    def coil_current_a(self) -> float:
+        """Current in the coil."""
+        self.advance()
+        return self.coil.coil_t / self.coil.parameters.coil_constant_t_per_a
+
+    @property
+    def sample_k(self) -> float:
+        """Temperature of the sample."""
+        self.advance()
+        return self.stage.sample_k
+
+    @property
+    def helium_boiled_l(self) -> float:
+        """Litres boiled since the start."""
+        self.advance()
+        return self.helium.boiled_l
+
+    def quench(self) -> None:
+        """Make the coil quench now."""
+        self.advance()
+        self.coil.quench()
+
+    # -- time --------------------------------------------------------------------------------------
+
+    def advance(self) -> None:
+        """Integrate to now; costs next to nothing when no time has passed."""
+        now = self._now()
+        at_once = 0
+        while now > self._time_s:
+            if self.coil.settle():
+                self.coil.quench()
+            left = now - self._time_s
+            step = min(left, _SEGMENT_MAX_S, self.coil.horizon_s(), self.stage.horizon_s())
+            if step <= 0.0 or self._time_s + step == self._time_s:
+                # Two events at one instant; more than a few would be an endless loop.
+                at_once += 1
+                if at_once > _EVENTS_AT_ONCE_MAX:
+                    raise RuntimeError(f"the world stands still at {self._time_s} s")
+                step = max(step, 1e-9)
+            else:
+                at_once = 0
+            self._segment(step)
+            self._time_s = now if step >= left else self._time_s + step
+        if self.coil.settle():
+            self.coil.quench()
+
+    def _segment(self, duration_s: float) -> None:
+        """Move everything through a time without events."""
+        coil, stage = self.coil, self.stage
+        velocity = coil.coil_velocity_t_per_s
+        energy_j = coil.energy_j
+        nodes = NODES_PER_PIECE * self._pieces(duration_s, velocity)
+        fields = coil.sample_path_t(duration_s, nodes)
+        start_k, start_slope = stage.sample_k, stage.sample_slope_k_per_s
+        coil.advance(duration_s)
+        stage.advance(duration_s, velocity)
+        self.helium.advance(duration_s, 0.0 if coil.quenched else velocity, coil.heater)
+        if coil.quenched:
+            self.helium.absorb(energy_j - coil.energy_j)
+        elif self.helium.litres == 0.0 and coil.coil_t != 0.0:
+            coil.quench()
+        if self.lock_ins:
+            end = (stage.sample_k, stage.sample_slope_k_per_s)
+            self._measure(duration_s, fields, (start_k, start_slope), end)
+
+    def _pieces(self, duration_s: float, velocity: float) -> int:
+        """How many cubics follow the signal: by the oscillation's phase and by the temperature."""
+        pieces = 1 + int(duration_s / self._quiet_s)
+        moving = velocity or self.coil.sample_t != self.coil.coil_t
+        if moving and self.sample.phase_t:
+            here = self.coil.sample_t
+            path = abs(velocity) * duration_s + abs(self.coil.coil_t - here)
+            nearest = max(abs(here) - path, self.sample.field_floor_t)
+            phase = self.sample.phase_t * path / (nearest * max(abs(here), nearest))
+            pieces = max(pieces, 1 + int(phase / _PHASE_PER_PIECE))
+        return min(pieces, 400)
+
+    def _measure(
+        self,
+        duration_s: float,
+        fields: list[float],
+        start: tuple[float, float],
+        end: tuple[float, float],
+    ) -> None:
+        nodes = len(fields) - 1
+        (t0, d0), (t1, d1) = start, end
+        # Cubic through both ends' temperatures and slopes.
+        d0, d1 = d0 * duration_s, d1 * duration_s
+        c2, c3 = 3 * (t1 - t0) - 2 * d0 - d1, 2 * (t0 - t1) + d0 + d1
+        longitudinal: list[float] | None = None
+        moving = fields[0] != fields[-1]
+        rates = None
+        if moving and any(p.pickup_v_s_per_t for p in self.parameters.lock_ins):
+            rates = _slopes(fields, duration_s)
+        for lock_in in self.lock_ins.values():
+            if lock_in.parameters.measures == "hall":
+                ohms = [self.sample.hall_ohm(b) for b in fields]
+            else:
+                if longitudinal is None:
+                    ohm = self.sample.longitudinal_ohm
+                    longitudinal = [
+                        ohm(b, t0 + s * (d0 + s * (c2 + s * c3)))
+                        for b, s in zip(fields, (i / nodes for i in range(nodes + 1)), strict=True)
+                    ]
+                ohms = longitudinal
+            lock_in.advance(duration_s, ohms, rates)
+
+
+def _slopes(values: list[float], duration_s: float) -> list[float]:
+    """Derivative at each node, by second-order differences."""
+    step = duration_s / (len(values) - 1)
+    inner = [(values[i + 1] - values[i - 1]) / (2 * step) for i in range(1, len(values) - 1)]
+    first = (-3 * values[0] + 4 * values[1] - values[2]) / (2 * step)
+    last = (3 * values[-1] - 4 * values[-2] + values[-3]) / (2 * step)
+    return [first, *inner, last]
