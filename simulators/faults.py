@@ -1,4 +1,4 @@
-"""Faults by hand: a panel that goes silent, garbles, freezes, forgets or lies.
+"""Faults by hand: a panel that goes silent, garbles, freezes, is late, forgets or lies.
 
 A quench by hand is `World.quench`.
 """
@@ -15,6 +15,8 @@ class FaultyPanel(FrontPanel):
         Orders are carried out; answers never come.
     deaf : bool
         Nothing is carried out and nothing answered.
+    late : bool
+        Answers are held back; when it is off again, the next answer comes behind the held one.
     garbled : bool
         Every second character of an answer is wrong.
     ignores_writes : bool
@@ -32,14 +34,27 @@ class FaultyPanel(FrontPanel):
         self.status = panel.status
         self.silent = False
         self.deaf = False
+        self.late = False
         self.garbled = False
         self.ignores_writes = False
         self.frozen = False
         self.replies: dict[str, str] = {}
         self._seen: dict[str, str | None] = {}
+        self._held: str | None = None
 
     def execute(self, line: str) -> str | None:
         """As the panel does, through the faults that are on."""
+        reply = self._answer(line)
+        if reply is None:
+            return None
+        if self.late:
+            self._held = reply
+            return None
+        if self._held is not None:
+            reply, self._held = f"{self._held}\n{reply}", None
+        return reply
+
+    def _answer(self, line: str) -> str | None:
         if self.deaf or (self.ignores_writes and "?" not in line):
             return None
         if line in self.replies:

@@ -55,7 +55,6 @@ class LockIn:
         self.parameters = p
         self._noise_source = noise
         self.reset()
-        self._settle_noise()
 
     def reset(self) -> None:
         """Settings as at power on; the filter starts from nothing."""

@@ -14,6 +14,8 @@ from scipy import constants
 _DAMPING_T_PER_K = (
     2 * math.pi**2 * constants.k * constants.m_e / (constants.hbar * constants.e)
 )  # 14.6932 T/K
+FIELD_MIN_T = 1e-4
+"""At and below this field there are no oscillations."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -96,7 +98,7 @@ class Sample:
             (2 * math.pi * o.frequency_t * max(1.0, o.harmonics / 2) for o in parameters.orbits),
             default=0.0,
         )
-        self.field_floor_t = self._visible_above_t()
+        self.slowest_t = 2 * math.pi * min((o.frequency_t for o in parameters.orbits), default=0.0)
 
     def hall_ohm(self, field_t: float) -> float:
         """R_xy, odd in the field."""
@@ -104,19 +106,16 @@ class Sample:
 
     def longitudinal_ohm(self, field_t: float, temperature_k: float) -> float:
         """R_xx, even in the field; at B = 0 the oscillations are gone."""
-        p = self.parameters
         b = abs(field_t)
-        total = p.resistance_ohm * (
-            1.0 + p.magnetoresistance_per_t * b + p.magnetoresistance_per_t2 * b * b
-        )
-        if b <= self.field_floor_t:
+        total = self.background_ohm(b)
+        if b <= FIELD_MIN_T:
             return total
         inverse = 1.0 / b
         for amplitude, damping, dingle_k, turns, phase in self._terms:
             scaled = damping * inverse
             x = scaled * temperature_k
             exponent = x + scaled * dingle_k
-            if exponent > 60.0:
+            if exponent > 40.0:
                 continue
             # X / sinh X = 2 X e^-X / (1 - e^-2X): no overflow, one exponential for both factors.
             factor = math.exp(-exponent)
@@ -125,10 +124,25 @@ class Sample:
             total += amplitude * factor * math.cos(turns * inverse + phase)
         return total
 
-    def _visible_above_t(self) -> float:
-        """Field below which every term's Dingle factor is under e^-60 (and never exactly zero)."""
-        floors = [damping * dingle_k / 60.0 for _, damping, dingle_k, _, _ in self._terms]
-        return max(1e-6, min(floors, default=0.0))
+    def background_ohm(self, field_t: float) -> float:
+        """R_xx without its oscillations."""
+        p = self.parameters
+        b = abs(field_t)
+        return p.resistance_ohm * (
+            1.0 + p.magnetoresistance_per_t * b + p.magnetoresistance_per_t2 * b * b
+        )
+
+    def oscillation_bound(self, field_t: float) -> float:
+        """Largest that all oscillations together can be at this field or below, over R0."""
+        if field_t <= FIELD_MIN_T:
+            return 0.0
+        return (
+            sum(
+                abs(amplitude) * math.exp(-damping * dingle_k / field_t)
+                for amplitude, damping, dingle_k, _, _ in self._terms
+            )
+            / self.parameters.resistance_ohm
+        )
 
 
 def _spin(orbit: Orbit, p: int) -> float:

@@ -81,14 +81,14 @@ def units(message: str) -> Iterator[Unit]:
     Refused
         A command error, at the unit where it is met.
     """
-    for number, text in enumerate(_split(message, ";")):
-        stripped = text.strip()
-        if stripped:
-            yield _unit(stripped)
-        elif number or ";" in message:
-            if number and text == message.rsplit(";", 1)[-1]:
-                return  # a last semicolon with nothing behind it is let pass
+    empty = False
+    for text in _split(message, ";"):
+        if empty:
             raise Refused(-102, "nothing between separators")
+        if stripped := text.strip():
+            yield _unit(stripped)
+        else:
+            empty = True  # let pass at the end of a message only
 
 
 def _unit(text: str) -> Unit:

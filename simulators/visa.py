@@ -6,12 +6,13 @@ of after waiting. Sessions, attributes and addresses are pyvisa-sim's own.
 """
 
 import itertools
+import threading
 from collections.abc import Mapping
-from typing import Any
+from typing import Any, SupportsInt
 
 import pyvisa
 from pyvisa import constants, errors, rname
-from pyvisa.typing import VISASession
+from pyvisa.typing import VISARMSession, VISASession
 from pyvisa.util import LibraryPath
 from pyvisa_sim.devices import Devices
 from pyvisa_sim.highlevel import SimVisaLibrary
@@ -30,6 +31,25 @@ class _PanelLibrary(SimVisaLibrary):
     def _init(self) -> None:
         self.sessions = {}
         self.devices = Devices()
+        # All panels of a rig share one world, and links may live in threads of their own.
+        self._one_at_a_time = threading.RLock()
+
+    def open(
+        self,
+        session: VISARMSession,
+        resource_name: str,
+        access_mode: constants.AccessModes = constants.AccessModes.no_lock,
+        open_timeout: SupportsInt = constants.VI_TMO_IMMEDIATE,
+    ) -> tuple[VISASession, constants.StatusCode]:
+        """viOpen: a socket gives each session a byte stream of its own."""
+        handle, status = super().open(session, resource_name, access_mode, open_timeout)
+        if status != _STATUS.success:
+            # A status alone would let pyvisa hand out a resource that leads nowhere.
+            raise errors.VisaIOError(status)
+        opened: Any = self.sessions[handle]
+        if isinstance(opened.device, FrontPanel):
+            opened.device = StreamPort(opened.device)
+        return handle, status
 
     def read(self, session: VISASession, count: int) -> tuple[bytes, constants.StatusCode]:
         """viRead: VPP-4.3 rules 6.1.1 to 6.1.6 on END, termination character and count."""
@@ -40,7 +60,8 @@ class _PanelLibrary(SimVisaLibrary):
         attributes = opened.attrs
         stop = attributes.get(_ATTRIBUTE.termchar, 10)
         stop = stop if attributes.get(_ATTRIBUTE.termchar_enabled, False) else None
-        taken, end = opened.device.take(count, stop)
+        with self._one_at_a_time:
+            taken, end = opened.device.take(count, stop)
         if end and not attributes.get(_ATTRIBUTE.suppress_end_enabled, False):
             return taken, _STATUS.success
         if stop is not None and taken and taken[-1] == stop:
@@ -49,10 +70,16 @@ class _PanelLibrary(SimVisaLibrary):
             return taken, _STATUS.success_max_count_read
         raise errors.VisaIOError(_STATUS.error_timeout)
 
+    def write(self, session: VISASession, data: bytes) -> tuple[int, constants.StatusCode]:
+        """viWrite."""
+        with self._one_at_a_time:
+            return super().write(session, data)
+
     def clear(self, session: VISASession) -> constants.StatusCode:
         """viClear: the port forgets what is unread and half written."""
         opened: Any = self.sessions[session]
-        opened.device.clear()
+        with self._one_at_a_time:
+            opened.device.clear()
         return _STATUS.success
 
 
@@ -97,5 +124,5 @@ def attach(panels: Mapping[str, FrontPanel]) -> pyvisa.ResourceManager:
         full = normal_address(address)
         if full in table:
             raise ValueError(f"two panels at the address {full}")
-        table[full] = StreamPort(panel) if full.endswith("SOCKET") else MessagePort(panel)
+        table[full] = panel if full.endswith("::SOCKET") else MessagePort(panel)
     return pyvisa.ResourceManager(library)

@@ -1,5 +1,6 @@
 """Coil, cryostat, sample, helium and lock-ins, coupled, and brought up to date when looked at."""
 
+from bisect import bisect_left
 from collections.abc import Callable
 from dataclasses import dataclass, field
 
@@ -9,10 +10,13 @@ from simulators.helium import HeliumBath, HeliumParameters
 from simulators.lockin import LockIn, LockInParameters
 from simulators.lowpass import NODES_PER_PIECE
 from simulators.noise import NoiseSource
-from simulators.sample import Sample, SampleParameters
+from simulators.sample import FIELD_MIN_T, Sample, SampleParameters
 
 _SEGMENT_MAX_S = 20.0
 _PHASE_PER_PIECE = 0.75
+_PIECES = (1, 2, 3, 4, 6, 8, 12, 16, 24, 32, 48, 64)  # few numbers, so that matrices are kept
+_STEP_MIN_S = 1e-4
+_UNSEEN = 1e-5  # of the zero-field resistance, behind the filter
 _EVENTS_AT_ONCE_MAX = 100
 
 
@@ -113,6 +117,8 @@ class World:
                 self.coil.quench()
             left = now - self._time_s
             step = min(left, _SEGMENT_MAX_S, self.coil.horizon_s(), self.stage.horizon_s())
+            while step > _STEP_MIN_S and self._pieces(step) > _PIECES[-1]:
+                step *= 0.5
             if step <= 0.0 or self._time_s + step == self._time_s:
                 # Two events at one instant; more than a few would be an endless loop.
                 at_once += 1
@@ -131,10 +137,18 @@ class World:
         coil, stage = self.coil, self.stage
         velocity = coil.coil_velocity_t_per_s
         energy_j = coil.energy_j
-        nodes = NODES_PER_PIECE * self._pieces(duration_s, velocity)
+        path = self._path_t(duration_s)
+        oscillates = self._sees_oscillations(duration_s, path)
+        nodes = (
+            NODES_PER_PIECE
+            * _PIECES[min(bisect_left(_PIECES, self._pieces(duration_s)), len(_PIECES) - 1)]
+        )
         fields = coil.sample_path_t(duration_s, nodes)
         start_k, start_slope = stage.sample_k, stage.sample_slope_k_per_s
+        before_t = coil.coil_t
         coil.advance(duration_s)
+        if coil.quenched:
+            velocity = (coil.coil_t - before_t) / duration_s
         stage.advance(duration_s, velocity)
         self.helium.advance(duration_s, 0.0 if coil.quenched else velocity, coil.heater)
         if coil.quenched:
@@ -143,19 +157,43 @@ class World:
             coil.quench()
         if self.lock_ins:
             end = (stage.sample_k, stage.sample_slope_k_per_s)
-            self._measure(duration_s, fields, (start_k, start_slope), end)
+            self._measure(duration_s, fields, (start_k, start_slope), end, oscillates)
 
-    def _pieces(self, duration_s: float, velocity: float) -> int:
+    def _pieces(self, duration_s: float) -> int:
         """How many cubics follow the signal: by the oscillation's phase and by the temperature."""
         pieces = 1 + int(duration_s / self._quiet_s)
-        moving = velocity or self.coil.sample_t != self.coil.coil_t
-        if moving and self.sample.phase_t:
-            here = self.coil.sample_t
-            path = abs(velocity) * duration_s + abs(self.coil.coil_t - here)
-            nearest = max(abs(here) - path, self.sample.field_floor_t)
-            phase = self.sample.phase_t * path / (nearest * max(abs(here), nearest))
+        path = self._path_t(duration_s)
+        if path and self._sees_oscillations(duration_s, path):
+            here = abs(self.coil.sample_t)
+            nearest = max(here - path, FIELD_MIN_T)
+            phase = self.sample.phase_t * path / (nearest * max(here, nearest))
             pieces = max(pieces, 1 + int(phase / _PHASE_PER_PIECE))
-        return min(pieces, 400)
+        return pieces
+
+    def _path_t(self, duration_s: float) -> float:
+        """Field through which the sample passes, at most."""
+        coil = self.coil
+        lag_s = coil.parameters.field_lag_s
+        path = abs(coil.coil_velocity_t_per_s) * duration_s
+        if lag_s <= 0.0:
+            return path
+        return (path + abs(coil.coil_t - coil.sample_t)) * min(1.0, duration_s / lag_s)
+
+    def _sees_oscillations(self, duration_s: float, path_t: float) -> bool:
+        """Whether a lock-in could see them: A / (omega tau) against what cannot be seen.
+
+        Near zero field they are damped to nothing and pass at any frequency; to follow them there
+        would cost much and show nothing.
+        """
+        if not path_t:
+            return True
+        farthest = abs(self.coil.sample_t) + path_t
+        omega = self.sample.slowest_t * path_t / duration_s / farthest**2
+        bound = self.sample.oscillation_bound(farthest)
+        return any(
+            bound > _UNSEEN * max(1.0, omega * lock_in.time_constant_s)
+            for lock_in in self.lock_ins.values()
+        )
 
     def _measure(
         self,
@@ -163,6 +201,7 @@ class World:
         fields: list[float],
         start: tuple[float, float],
         end: tuple[float, float],
+        oscillates: bool,
     ) -> None:
         nodes = len(fields) - 1
         (t0, d0), (t1, d1) = start, end
@@ -178,7 +217,9 @@ class World:
             if lock_in.parameters.measures == "hall":
                 ohms = [self.sample.hall_ohm(b) for b in fields]
             else:
-                if longitudinal is None:
+                if longitudinal is None and not oscillates:
+                    longitudinal = [self.sample.background_ohm(b) for b in fields]
+                elif longitudinal is None:
                     ohm = self.sample.longitudinal_ohm
                     longitudinal = [
                         ohm(b, t0 + s * (d0 + s * (c2 + s * c3)))
