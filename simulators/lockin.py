@@ -72,6 +72,7 @@ class LockIn:
             self.order
         )
         self._noise_due_s = 0.0
+        self._shown: tuple[float, float] | None = None
 
     # -- orders --------------------------------------------------------------------------------
 
@@ -80,6 +81,7 @@ class LockIn:
         self._catch_up()
         self._noise *= math.sqrt(time_constant_s / self.time_constant_s)
         self.time_constant_s = time_constant_s
+        self._shown = None
 
     def set_order(self, order: int) -> None:
         """New number of poles; added poles start at the old output."""
@@ -111,6 +113,7 @@ class LockIn:
         m, w = lowpass.response(self.order, duration_s / self.time_constant_s, pieces)
         self._state = m @ self._state + w @ values
         self._noise_due_s += duration_s
+        self._shown = None
 
     def _catch_up(self) -> None:
         """Bring the noise up to now: one exact step, however long."""
@@ -128,20 +131,26 @@ class LockIn:
 
     def output_v(self) -> tuple[float, float]:
         """X and Y of one instant, neither limited nor digitised."""
+        if self._shown is not None:
+            return self._shown
         self._catch_up()
         scale = self.parameters.noise_v_per_rthz / math.sqrt(self.time_constant_s)
         x, y = self._noise[-1].tolist()
-        return float(self._state[-1]) + scale * x, scale * y
+        self._shown = float(self._state[-1]) + scale * x, scale * y
+        return self._shown
 
     @property
     def overload(self) -> bool:
         """Whether the output is beyond full scale."""
-        return any(abs(value) > self.full_scale_v for value in self.output_v())
+        x, y = self.output_v()
+        return abs(x) > self.full_scale_v or abs(y) > self.full_scale_v
 
     def read(self) -> tuple[float, float]:
         """X and Y as shown: limited to full scale and digitised, V rms."""
         step = self.full_scale_v / ADC_STEPS
-        x, y = (
-            round(min(ADC_STEPS, max(-ADC_STEPS, value / step))) * step for value in self.output_v()
-        )
-        return x, y
+        x, y = self.output_v()
+        return _digits(x / step) * step, _digits(y / step) * step
+
+
+def _digits(steps: float) -> int:
+    return round(min(ADC_STEPS, max(-ADC_STEPS, steps)))

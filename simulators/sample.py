@@ -98,6 +98,7 @@ class Sample:
             (2 * math.pi * o.frequency_t * max(1.0, o.harmonics / 2) for o in parameters.orbits),
             default=0.0,
         )
+        self.clear_t = self._clear_above_t()
         self.slowest_t = 2 * math.pi * min((o.frequency_t for o in parameters.orbits), default=0.0)
 
     def hall_ohm(self, field_t: float) -> float:
@@ -143,6 +144,15 @@ class Sample:
             )
             / self.parameters.resistance_ohm
         )
+
+    def _clear_above_t(self) -> float:
+        """Field above which the oscillations are surely worth following; a shortcut in time."""
+        field_t = 1e-2
+        while self.oscillation_bound(field_t) < 0.1:
+            field_t *= 1.1
+            if field_t > 1e3:
+                return math.inf
+        return field_t
 
 
 def _spin(orbit: Orbit, p: int) -> float:

@@ -63,6 +63,11 @@ class World:
         self.helium = HeliumBath(parameters.helium)
         self.lock_ins = {p.name: LockIn(p, self.noise(p.name)) for p in parameters.lock_ins}
         self.gauges = {p.name: p for p in parameters.gauges}
+        self._longitudinal = [
+            lock_in
+            for lock_in in self.lock_ins.values()
+            if lock_in.parameters.measures == "longitudinal"
+        ]
         self._quiet_s = parameters.stage.response_s / 3.0
         for lock_in in self.lock_ins.values():
             if lock_in.parameters.measures not in {"longitudinal", "hall"}:
@@ -117,8 +122,10 @@ class World:
                 self.coil.quench()
             left = now - self._time_s
             step = min(left, _SEGMENT_MAX_S, self.coil.horizon_s(), self.stage.horizon_s())
-            while step > _STEP_MIN_S and self._pieces(step) > _PIECES[-1]:
+            pieces, oscillates = self._plan(step)
+            while pieces > _PIECES[-1] and step > _STEP_MIN_S:
                 step *= 0.5
+                pieces, oscillates = self._plan(step)
             if step <= 0.0 or self._time_s + step == self._time_s:
                 # Two events at one instant; more than a few would be an endless loop.
                 at_once += 1
@@ -127,22 +134,17 @@ class World:
                 step = max(step, 1e-9)
             else:
                 at_once = 0
-            self._segment(step)
+            self._segment(step, min(pieces, _PIECES[-1]), oscillates)
             self._time_s = now if step >= left else self._time_s + step
         if self.coil.settle():
             self.coil.quench()
 
-    def _segment(self, duration_s: float) -> None:
+    def _segment(self, duration_s: float, pieces: int, oscillates: bool) -> None:
         """Move everything through a time without events."""
         coil, stage = self.coil, self.stage
         velocity = coil.coil_velocity_t_per_s
         energy_j = coil.energy_j
-        path = self._path_t(duration_s)
-        oscillates = self._sees_oscillations(duration_s, path)
-        nodes = (
-            NODES_PER_PIECE
-            * _PIECES[min(bisect_left(_PIECES, self._pieces(duration_s)), len(_PIECES) - 1)]
-        )
+        nodes = NODES_PER_PIECE * pieces
         fields = coil.sample_path_t(duration_s, nodes)
         start_k, start_slope = stage.sample_k, stage.sample_slope_k_per_s
         before_t = coil.coil_t
@@ -159,16 +161,22 @@ class World:
             end = (stage.sample_k, stage.sample_slope_k_per_s)
             self._measure(duration_s, fields, (start_k, start_slope), end, oscillates)
 
-    def _pieces(self, duration_s: float) -> int:
-        """How many cubics follow the signal: by the oscillation's phase and by the temperature."""
+    def _plan(self, duration_s: float) -> tuple[int, bool]:
+        """How many cubics follow the signal, and whether the oscillations are worth following.
+
+        The number comes from the oscillation's phase and from the temperature's response.
+        """
         pieces = 1 + int(duration_s / self._quiet_s)
         path = self._path_t(duration_s)
-        if path and self._sees_oscillations(duration_s, path):
+        oscillates = self._sees_oscillations(duration_s, path)
+        if path and oscillates:
             here = abs(self.coil.sample_t)
             nearest = max(here - path, FIELD_MIN_T)
             phase = self.sample.phase_t * path / (nearest * max(here, nearest))
             pieces = max(pieces, 1 + int(phase / _PHASE_PER_PIECE))
-        return pieces
+        if pieces <= _PIECES[-1]:
+            pieces = _PIECES[bisect_left(_PIECES, pieces)]
+        return pieces, oscillates
 
     def _path_t(self, duration_s: float) -> float:
         """Field through which the sample passes, at most."""
@@ -185,14 +193,16 @@ class World:
         Near zero field they are damped to nothing and pass at any frequency; to follow them there
         would cost much and show nothing.
         """
-        if not path_t:
-            return True
+        if not self._longitudinal:
+            return False
         farthest = abs(self.coil.sample_t) + path_t
+        if not path_t or farthest > self.sample.clear_t:
+            return True
         omega = self.sample.slowest_t * path_t / duration_s / farthest**2
         bound = self.sample.oscillation_bound(farthest)
         return any(
             bound > _UNSEEN * max(1.0, omega * lock_in.time_constant_s)
-            for lock_in in self.lock_ins.values()
+            for lock_in in self._longitudinal
         )
 
     def _measure(

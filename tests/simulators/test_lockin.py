@@ -76,6 +76,13 @@ def test_noise_steps_add_up_to_the_stationary_covariance(order: int, step: float
     assert m @ p @ m.T + c @ c.T == pytest.approx(p, rel=1e-9)
 
 
+@pytest.mark.parametrize(("order", "enbw"), [(1, 1 / 4), (2, 1 / 8), (3, 3 / 32), (4, 5 / 64)])
+def test_stationary_variance_is_the_equivalent_noise_bandwidth(order: int, enbw: float) -> None:
+    """Table of n RC poles: 1/4 tau, 1/8 tau, 3/32 tau, 5/64 tau; input of 1 V/sqrt(Hz)."""
+    output = lowpass.stationary_noise(order)[-1]
+    assert output @ output == pytest.approx(enbw, rel=1e-12)
+
+
 def resistance_ohm(
     p: SampleParameters, field_t: NDArray[np.float64], temperature_k: float
 ) -> NDArray[np.float64]:
