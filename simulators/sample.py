@@ -71,7 +71,7 @@ class SampleParameters:
     orbits: tuple[Orbit, ...] = ()
 
     @property
-    def mobility_m2_per_vs_per_square(self) -> float:
+    def mobility_m2_per_v_s(self) -> float:
         """1/(n e R0): the mobility of a square of this sheet, m^2/(V s)."""
         return 1.0 / (abs(self.hall_density_m2) * constants.e * self.resistance_ohm)
 

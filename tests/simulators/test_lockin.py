@@ -102,7 +102,7 @@ def resistance_ohm(
 def test_oscillation_read_once_a_second_agrees_with_a_fine_reference() -> None:
     """Against the project's own array physics and scipy's lsim at 2 ms; 1e-4 of the range.
 
-    300 T and 410 T are met at up to 0.56 Hz here, two harmonics each.
+    410 T is met at 0.51 Hz at 4 T and 20 mT/s, its second harmonic at 1.0 Hz.
     """
     p = quiet()
     clock = Clock()

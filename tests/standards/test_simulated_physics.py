@@ -145,4 +145,4 @@ def test_clean_sample_without_dingle_damping_is_finite_at_any_field() -> None:
 def test_mobility_follows_from_density_and_resistance() -> None:
     """mu = 1 / (n e R): 1e16 m^-2 and 624.15 ohm are 1 m^2/(V s)."""
     sample = SampleParameters(resistance_ohm=1 / (1e16 * constants.e), hall_density_m2=-1e16)
-    assert sample.mobility_m2_per_vs_per_square == pytest.approx(1.0)
+    assert sample.mobility_m2_per_v_s == pytest.approx(1.0)
