@@ -7,7 +7,7 @@ are projected out (variable projection: G. H. Golub and V. Pereyra, SIAM J. Nume
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 import numpy.typing as npt
@@ -18,6 +18,7 @@ from orchestrator.analysis.sweeps import AnalysisError, ComplexArray, MovingSwee
 from orchestrator.analysis.uncertainty import (
     autocovariance,
     correlation_lags,
+    lag_products,
     sandwich_covariance,
 )
 from orchestrator.physics.landau import landau_moment
@@ -33,12 +34,16 @@ _SPIKE = 6.0  # robust standard deviations beyond which a sample is left out
 @dataclass(frozen=True)
 class OrbitStart:
     """Where the fit of one orbit begins: `frequency_t`, `mass`, and `damping_k`, which is mass
-    times Dingle temperature. `harmonics` are the multiples p that the fit includes."""
+    times Dingle temperature. `harmonics` are the multiples p that the fit includes.
+
+    One that is not `reported` is there for the others' sake: a harmonic of theirs whose damping is
+    not what their own would make it."""
 
     frequency_t: float
     mass: float = 0.2
     damping_k: float = 0.3
     harmonics: tuple[int, ...] = (1,)
+    reported: bool = True
 
 
 @dataclass(frozen=True)
@@ -95,6 +100,15 @@ class Ladder:
         self.weight = np.repeat(1 / np.asarray(noise_ohm), sizes)
         measured = np.concatenate([s.resistance_ohm for s in self.sweeps])
         self.target = self.project(measured * self.weight)
+
+    def weigh_by(self, residual: Sequence[FloatArray]) -> None:
+        """Weigh each sweep by what a fit left of it, in ohm.
+
+        Differences of neighbours, with which the weights begin, hold some of a strong signal.
+        """
+        scatter = [math.sqrt(float(autocovariance([r], 0)[0])) for r in residual]
+        old = self.noise_ohm
+        self.weigh([s if s > 0 else o for s, o in zip(scatter, old, strict=True)])
 
     def project(self, values: FloatArray) -> FloatArray:
         """Values, shape (n,) or (n, k), without each sweep's background."""
@@ -302,7 +316,9 @@ def _finish(model: _Model, starts: Sequence[OrbitStart], values: FloatArray) -> 
             f"{residual.size} points for {residual.size - freedom} parameters, "
             "allowed: at least 10 points more than parameters"
         )
-    noise = autocovariance(ladder.split(residual), ladder.lags, freedom / residual.size)
+    used = [lag_products(basis, [0, basis.shape[0]], ladder.lags) for basis in ladder.bases]
+    used.append(lag_products(np.linalg.qr(jacobian)[0], ladder.starts, ladder.lags))
+    noise = autocovariance(ladder.split(residual), ladder.lags, np.concatenate(used))
     try:
         covariance = sandwich_covariance(jacobian, ladder.starts, noise)
     except np.linalg.LinAlgError as error:
@@ -315,7 +331,7 @@ def _finish(model: _Model, starts: Sequence[OrbitStart], values: FloatArray) -> 
         wide[np.ix_(kept, kept)] = covariance
         covariance = wide
     orbits = tuple(
-        OrbitStart(float(f), float(m), float(d), start.harmonics)
+        replace(start, frequency_t=float(f), mass=float(m), damping_k=float(d))
         for (f, m, d), start in zip(model.unpack(values), starts, strict=True)
     )
     return LadderFit(orbits, linear, covariance, model.held, ladder.split(residual / ladder.weight))

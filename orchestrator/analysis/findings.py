@@ -78,14 +78,17 @@ def harmonic_significance(fit: LadderFit) -> list[dict[int, float]]:
 
 
 def orbit_findings(fit: LadderFit) -> list[OrbitFinding]:
-    """The fit's orbits as findings, in the order of the fit."""
+    """The fit's orbits as findings, in the order of the fit, without those not reported."""
     significance = harmonic_significance(fit)
     count = 2 * fit.linear.shape[0]
     result, row = [], 0
     for number, orbit in enumerate(fit.orbits):
         pair = slice(2 * row, 2 * row + 2)
         at = count + 3 * number
-        c, s = fit.linear[row]
+        row += len(orbit.harmonics)
+        if not orbit.reported:
+            continue
+        c, s = fit.linear[pair.start // 2]
         amplitude = math.hypot(c, s)
         spread = fit.covariance[pair, pair]
         along = np.array([c, s]) / amplitude
@@ -111,7 +114,6 @@ def orbit_findings(fit: LadderFit) -> list[OrbitFinding]:
                 signal_to_noise=significance[number][orbit.harmonics[0]],
             )
         )
-        row += len(orbit.harmonics)
     return result
 
 

@@ -10,7 +10,7 @@ import numpy.typing as npt
 from scipy import constants
 
 from orchestrator.analysis.sweeps import LEAST_POINTS, AnalysisError, Sweep
-from orchestrator.analysis.uncertainty import autocovariance, sandwich_covariance
+from orchestrator.analysis.uncertainty import autocovariance, lag_products, sandwich_covariance
 from orchestrator.physics import lockin
 
 FloatArray = npt.NDArray[np.float64]
@@ -138,8 +138,8 @@ def _line(
     values = np.linalg.lstsq(matrix, target, rcond=None)[0]
     residual = target - matrix @ values
     pieces = [residual[a:b] for a, b in itertools.pairwise(starts)]
-    freedom = residual.size - matrix.shape[1] - len(pieces)
-    noise = autocovariance(pieces, _LAGS, freedom / residual.size)
+    used = lag_products(np.linalg.qr(matrix)[0], starts, _LAGS)
+    noise = autocovariance(pieces, _LAGS, used)
     try:
         covariance = sandwich_covariance(matrix, starts, noise)
     except np.linalg.LinAlgError as error:

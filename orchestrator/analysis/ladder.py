@@ -49,7 +49,9 @@ def find_orbits(
         If a sweep cannot be analysed.
     """
     fitted = search.search(stack(sweeps), count_max=count_max, known=known)
-    return sorted(o.frequency_t for o in fitted.orbits) if fitted is not None else []
+    if fitted is None:
+        return []
+    return sorted(o.frequency_t for o in fitted.orbits if o.reported)
 
 
 def fit_ladder(sweeps: Sequence[Sweep], frequencies_t: Sequence[float]) -> list[OrbitFinding]:
@@ -86,7 +88,8 @@ def fit_ladder(sweeps: Sequence[Sweep], frequencies_t: Sequence[float]) -> list[
         fitted = damping.fit(ladder, starts)
         starts = list(fitted.orbits)
         residual = np.concatenate(fitted.residual) * ladder.weight
-    return orbit_findings(search.fit_with_harmonics(ladder, starts, span))
+    fitted = search.fit_with_harmonics(ladder, starts, span)
+    return orbit_findings(search.refined(ladder, fitted))
 
 
 def analyse_ladder(

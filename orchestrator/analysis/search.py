@@ -34,9 +34,12 @@ FALSE_ALARM_KNOWN = 1e-2
 _KNOWN_PART = 0.15
 _OVERSAMPLING = 6
 _MOST_FREQUENCIES = 150_000
-_TRIALS_PER_BIN = 2.0  # the templates are alike: together they are about two independent searches
+_TRIALS_PER_BIN = 12.0
+# The maximum between bins counts as sqrt(power) times the bins (R. V. Baluev, Mon. Not. R. Astron.
+# Soc. 385, 1279 (2008)), about 4; the templates together as about three independent searches.
 _LEAST_PERIODS = 5.0
 _HARMONICS = (1, 2, 3)
+_HIGHEST_HARMONIC = 5  # up to this multiple, a peak is taken for a harmonic
 _LOOK_FOR_HARMONICS = 20.0  # standard deviations of the first above which others may be seen
 _KEEP_HARMONIC = 4.0  # standard deviations above which a harmonic is kept in the fit
 # Mass, and mass times Dingle temperature, of the dampings tried.
@@ -143,7 +146,7 @@ def strongest_peak(
     Parameters
     ----------
     avoided : sequence of float
-        Frequencies around which what is left of an orbit or its harmonic is no new orbit.
+        Frequencies around which what is left of an orbit is no new one.
     known : sequence of float
         Expected frequencies; near them a weaker peak is enough.
     """
@@ -292,33 +295,62 @@ def search(ladder: Ladder, *, count_max: int = 4, known: Sequence[float] = ()) -
     residual = ladder.target
     fitted: LadderFit | None = None
     refused: list[float] = []
-    for _ in range(count_max + 3):
+    for _ in range(count_max + 4):
         orbits = list(fitted.orbits) if fitted is not None else []
-        if len(orbits) >= count_max:
+        if sum(o.reported for o in orbits) >= count_max:
             break
-        avoided = [p * o.frequency_t for o in orbits for p in range(1, 6)]
-        avoided = [a for a in avoided if not _is_known(a, orbits, known)] + refused
+        avoided = [*(o.frequency_t for o in orbits), *refused]
         peak = strongest_peak(ladder, residual, span, avoided, known)
         if peak is None:
             break
-        start = start_of(ladder, residual, peak.frequency_t)
-        # What was taken for an orbit may turn out to be a harmonic of the new one.
-        multiples = [p * start.frequency_t for p in _HARMONICS[1:]]
-        multiples = [m for m in multiples if not _is_known(m, [start], known)]
-        others = [
-            o for o in orbits if all(abs(o.frequency_t - m) > span.resolution_t for m in multiples)
-        ]
-        try:
-            attempt = fit_with_harmonics(ladder, [*others, start], span)
-        except AnalysisError:
-            refused.append(peak.frequency_t)
-            continue
-        if not _stands(attempt, peak, span, avoided):
+        attempt = _joined(ladder, orbits, start_of(ladder, residual, peak.frequency_t), span, known)
+        if attempt is None or not _stands(attempt, peak, span, avoided):
             refused.append(peak.frequency_t)
             continue
         fitted = attempt
+        ladder.weigh_by(fitted.residual)
         residual = np.concatenate(fitted.residual) * ladder.weight
-    return fitted
+    return refined(ladder, fitted) if fitted is not None else None
+
+
+def refined(ladder: Ladder, fitted: LadderFit) -> LadderFit:
+    """The same fit once more, each sweep weighted by its own noise as the fit left it.
+
+    Raises
+    ------
+    AnalysisError
+        If the fit fails.
+    """
+    ladder.weigh_by(fitted.residual)
+    return damping.fit(ladder, fitted.orbits)
+
+
+def _joined(
+    ladder: Ladder,
+    orbits: Sequence[OrbitStart],
+    start: OrbitStart,
+    span: Span,
+    known: Sequence[float],
+) -> LadderFit | None:
+    """Fit of the orbits so far and one more; None if it fails.
+
+    What was taken for an orbit and turns out to be a harmonic of the new one is dropped; a new one
+    that is a harmonic of another, with a damping of its own, is fitted but not reported.
+    """
+
+    def harmonic(frequency_t: float, of: OrbitStart) -> bool:
+        multiples = [p * of.frequency_t for p in range(2, _HIGHEST_HARMONIC + 1)]
+        return any(
+            abs(frequency_t - m) < 2 * span.resolution_t and not _is_known(m, [of], known)
+            for m in multiples
+        )
+
+    others = [o for o in orbits if not harmonic(o.frequency_t, start)]
+    alone = not any(harmonic(start.frequency_t, o) for o in orbits if o.reported)
+    try:
+        return fit_with_harmonics(ladder, [*others, replace(start, reported=alone)], span)
+    except AnalysisError:
+        return None
 
 
 def _is_known(frequency_t: float, orbits: Sequence[OrbitStart], known: Sequence[float]) -> bool:
@@ -331,7 +363,7 @@ def _is_known(frequency_t: float, orbits: Sequence[OrbitStart], known: Sequence[
 
 
 def _stands(attempt: LadderFit, peak: Peak, span: Span, avoided: Sequence[float]) -> bool:
-    """Whether the newest orbit of a fit is where its peak was, and no harmonic, and seen."""
+    """Whether the newest orbit of a fit is where its peak was, no other's side lobe, and seen."""
     orbit = attempt.orbits[-1]
     significance = findings.harmonic_significance(attempt)[-1][1]
     others = [*(o.frequency_t for o in attempt.orbits[:-1]), *avoided]

@@ -68,7 +68,8 @@ class Sweep:
         lag = lockin.lag_s(self.time_constant_s, self.poles)
         then = self.time_s - lag
         size = np.abs(np.interp(then, self.time_s, self.field_t))
-        rate = _smooth(np.gradient(size, self.time_s), 5)
+        moved = _smooth(np.gradient(np.abs(self.field_t), self.time_s), 5)
+        rate = np.asarray(np.interp(then, self.time_s, moved), dtype=np.float64)
         inside = _moving_part(rate) & (then >= self.time_s[0]) & (size > size.max() / _LOWEST_PART)
         if int(inside.sum()) < LEAST_POINTS:
             raise AnalysisError(

@@ -33,8 +33,34 @@ def correlation_lags(interval_s: float, time_constant_s: float, poles: int) -> i
     return lags
 
 
-def autocovariance(pieces: Sequence[FloatArray], lags: int, freedom_part: float) -> FloatArray:
-    """Autocovariance of residuals at lags 0 to `lags`, pooled over separate stretches.
+def lag_products(columns: FloatArray, starts: Sequence[int], lags: int) -> FloatArray:
+    """Sums of each column times itself shifted by 0 to `lags` samples, within each stretch.
+
+    Parameters
+    ----------
+    columns : array, shape (n, k)
+        Orthonormal columns that a fit has used up.
+    starts : sequence of int
+        First row of each stretch, and n at the end.
+    lags : int
+        Largest lag.
+
+    Returns
+    -------
+    array, shape (k, lags + 1)
+    """
+    result = np.zeros((columns.shape[1], lags + 1))
+    for first, last in itertools.pairwise(starts):
+        part = columns[first:last]
+        for lag in range(lags + 1):
+            result[:, lag] += np.sum(part[: part.shape[0] - lag] * part[lag:], axis=0)
+    return result
+
+
+def autocovariance(
+    pieces: Sequence[FloatArray], lags: int, products: FloatArray | None = None
+) -> FloatArray:
+    """Autocovariance of noise at lags 0 to `lags` from a fit's residuals, pooled over stretches.
 
     Parameters
     ----------
@@ -42,9 +68,10 @@ def autocovariance(pieces: Sequence[FloatArray], lags: int, freedom_part: float)
         Residuals of each sweep, in the same unit of noise.
     lags : int
         Largest lag.
-    freedom_part : float
-        Degrees of freedom over number of samples; a fit of many parameters leaves residuals too
-        small by this.
+    products : array, shape (k, lags + 1), optional
+        `lag_products` of the orthonormal columns of the fit. What the fit took out of the noise
+        along each column is put back: at lag 0 this is the count of degrees of freedom, and at
+        other lags it has the same size.
 
     Returns
     -------
@@ -54,11 +81,16 @@ def autocovariance(pieces: Sequence[FloatArray], lags: int, freedom_part: float)
     together = np.concatenate(pieces)
     limit = 5 * float(np.median(np.abs(together))) / 0.6745
     clipped = [np.clip(piece, -limit, limit) for piece in pieces]
-    sums = np.zeros(lags + 1)
+    raw, sizes = np.zeros(lags + 1), np.zeros(lags + 1)
     for lag in range(lags + 1):
-        products = sum(float(p[: p.size - lag] @ p[lag:]) for p in clipped)
-        sums[lag] = products / sum(p.size - lag for p in clipped)
-    return sums / freedom_part
+        sizes[lag] = sum(p.size - lag for p in clipped)
+        raw[lag] = sum(float(p[: p.size - lag] @ p[lag:]) for p in clipped) / sizes[lag]
+    found = raw
+    if products is not None:
+        for _ in range(3):  # the noise along the columns is itself that of the result
+            along = products[:, 0] * found[0] + 2 * products[:, 1:] @ found[1:]
+            found = raw + np.maximum(along, 0.0) @ products / sizes
+    return found
 
 
 def sandwich_covariance(
