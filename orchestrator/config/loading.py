@@ -1,0 +1,54 @@
+"""From a document to a typed model; the first thing that is wrong is told with its place."""
+
+from typing import Any, TypeVar
+
+from pydantic import ValidationError
+
+from orchestrator.config.document import ConfigError, Document, Key, key_text
+from orchestrator.config.quantity import Strict
+
+Model = TypeVar("Model", bound=Strict)
+
+_WORDS = {
+    "missing": "is missing, and has no default",
+    "extra_forbidden": "is not a key of this table",
+}
+
+
+def build(model: type[Model], document: Document) -> Model:
+    """Build ``model`` from a document.
+
+    Raises
+    ------
+    ConfigError
+        With the file, line, key, value and allowed range of the first error in the file.
+    """
+    try:
+        return model.model_validate(document.data)
+    except ValidationError as error:
+        found = [_config_error(document, item) for item in error.errors()]
+        raise min(found, key=lambda one: one.line or 0) from None
+
+
+def _config_error(document: Document, item: Any) -> ConfigError:
+    key: Key = tuple(item["loc"])
+    context = item.get("ctx") or {}
+    problem = _WORDS.get(item["type"], item["msg"])
+    given = None if item["type"] == "missing" else _shown(item["input"])
+    allowed = context.get("allowed") or context.get("expected")
+    return ConfigError(
+        document.path,
+        problem,
+        line=document.line_of(key),
+        key=key_text(key),
+        value=given,
+        allowed=allowed,
+    )
+
+
+def _shown(given: object) -> str:
+    if isinstance(given, str):
+        return f'"{given}"'
+    if isinstance(given, dict | list):
+        return "a table" if isinstance(given, dict) else "a list"
+    return str(given).lower() if isinstance(given, bool) else str(given)
