@@ -31,7 +31,7 @@ def build(model: type[Model], document: Document) -> Model:
 
 
 def _config_error(document: Document, item: Any) -> ConfigError:
-    key: Key = tuple(item["loc"])
+    key = _without_tags(tuple(item["loc"]), document.data)
     context = item.get("ctx") or {}
     problem = _WORDS.get(item["type"], item["msg"])
     given = None if item["type"] == "missing" else _shown(item["input"])
@@ -44,6 +44,18 @@ def _config_error(document: Document, item: Any) -> ConfigError:
         value=given,
         allowed=allowed,
     )
+
+
+def _without_tags(key: Key, data: Any) -> Key:
+    """Leave out the names of the union's members, which pydantic adds and no file contains."""
+    kept: Key = ()
+    for index, part in enumerate(key):
+        inside = (isinstance(data, dict) and part in data) or isinstance(data, list)
+        if inside:
+            data = data[part]
+        if inside or index == len(key) - 1:
+            kept += (part,)
+    return kept
 
 
 def _shown(given: object) -> str:
