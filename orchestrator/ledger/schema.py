@@ -236,19 +236,20 @@ def to_json(data: Mapping[str, Any], what: str) -> str:
         Something in the data has no JSON form; ``what`` names the row it was for.
     """
     try:
-        return json.dumps(_plain(data), sort_keys=True, allow_nan=False, separators=(",", ":"))
+        return json.dumps(plain_json(data), sort_keys=True, allow_nan=False, separators=(",", ":"))
     except (TypeError, ValueError) as error:
         raise LedgerError(f"the data of {what} cannot be kept as JSON: {error}") from None
 
 
-def _plain(value: Any) -> Any:
+def plain_json(value: Any) -> Any:
+    """What JSON can hold of a value: mappings, lists, text, numbers; not finite becomes None."""
     if isinstance(value, float):
         return float(value) if math.isfinite(value) else None
     if isinstance(value, Mapping):
-        return {str(key): _plain(entry) for key, entry in value.items()}
+        return {str(key): plain_json(entry) for key, entry in value.items()}
     if isinstance(value, list | tuple | set | frozenset):
-        entries = [_plain(entry) for entry in value]
+        entries = [plain_json(entry) for entry in value]
         return sorted(entries) if isinstance(value, set | frozenset) else entries
     if hasattr(value, "tolist"):  # numpy's scalars and arrays
-        return _plain(value.tolist())
+        return plain_json(value.tolist())
     return value
