@@ -1,0 +1,105 @@
+"""Ceilings: at each field the largest ramp rate, and the reason for it.
+
+Between its edges a ceiling is monotonic in the field's magnitude, so that its least value over a
+stretch is found at the stretch's ends, at zero field, or at an edge.
+"""
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from orchestrator.config.rig import Magnet, Stage
+from orchestrator.physics.magnet import rate_for_eddy_heating
+
+Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True)
+class Ceiling:
+    """One reason to be slow.
+
+    Attributes
+    ----------
+    name : str
+        What binds, for people: ``"magnet table"``, ``"charge voltage"``.
+    rate_t_per_s : Callable[[Array], Array]
+        Largest rate in T/s at each magnitude of the field in T.
+    edges_t : tuple of float
+        Magnitudes at which the rate jumps; between them it is monotonic in the magnitude.
+    """
+
+    name: str
+    rate_t_per_s: Callable[[Array], Array]
+    edges_t: tuple[float, ...] = ()
+
+
+@dataclass(frozen=True)
+class Ceilings:
+    """Several ceilings together; the lowest binds."""
+
+    members: tuple[Ceiling, ...]
+
+    def at(self, field_t: Array) -> tuple[Array, list[str]]:
+        """The rate in T/s allowed at each field in T, and the name of the ceiling that binds."""
+        size = np.abs(np.asarray(field_t, dtype=float))
+        rates = np.array([member.rate_t_per_s(size) for member in self.members])
+        binding = np.argmin(rates, axis=0)
+        return rates.min(axis=0), [self.members[index].name for index in binding]
+
+    def over(self, from_t: float, to_t: float) -> tuple[float, str]:
+        """The rate in T/s allowed everywhere on a stretch of field, and what binds it."""
+        low, high = sorted((from_t, to_t))
+        points = {abs(low), abs(high)} | ({0.0} if low < 0 < high else set())
+        least, most = min(points), max(points)
+        for edge in (edge for member in self.members for edge in member.edges_t):
+            # An edge belongs to the zone below it, so the zone above is looked at just beyond.
+            if least <= edge < most:
+                points |= {edge, float(np.nextafter(edge, np.inf))}
+        rates, names = self.at(np.array(sorted(points)))
+        at = int(np.argmin(rates))
+        return float(rates[at]), names[at]
+
+
+def magnet_table(magnet: Magnet) -> Ceiling:
+    """The rig's table; a zone's edge belongs to the zone below it, and beyond the last: no ramp."""
+    edges = np.array([zone.to_t for zone in magnet.ramp_ceiling])
+    rates = np.array([*(zone.rate_t_per_s for zone in magnet.ramp_ceiling), 0.0])
+    return Ceiling(
+        "magnet table",
+        lambda size: rates[np.searchsorted(edges, size, side="left")],
+        tuple(float(edge) for edge in edges),
+    )
+
+
+def charge_voltage(magnet: Magnet) -> Ceiling:
+    """What is left of the charge voltage after the leads' drop drives L dI/dt (Wilson 1983)."""
+    scale = magnet.coil_constant_t_per_a
+
+    def rate(size: Array) -> Array:
+        left = magnet.charge_voltage_max_v - magnet.lead_resistance_ohm * size / scale
+        return np.maximum(left, 0.0) * scale / magnet.inductance_h
+
+    return Ceiling("charge voltage", rate)
+
+
+def eddy_heating(stage: Stage) -> Ceiling:
+    """The rate whose eddy heating of the stage is what the rig allows (Ekin 2006)."""
+    most = rate_for_eddy_heating(stage.eddy_coefficient_w_s2_per_t2, stage.eddy_power_max_w)
+    return Ceiling("eddy heating", lambda size: np.full_like(size, most))
+
+
+def constant(name: str, rate_t_per_s: float) -> Ceiling:
+    """The same rate everywhere, such as the sequence's own limit."""
+    return Ceiling(name, lambda size: np.full_like(size, rate_t_per_s))
+
+
+def safety(magnet: Magnet) -> Ceilings:
+    """The ceilings that protect the magnet; no finding and no sequence ever loosens them."""
+    return Ceilings((magnet_table(magnet), charge_voltage(magnet)))
+
+
+def with_more(ceilings: Ceilings, more: Sequence[Ceiling]) -> Ceilings:
+    """The same ceilings and some more."""
+    return Ceilings((*ceilings.members, *more))
