@@ -1,0 +1,164 @@
+"""The world file: what a simulated rig is really made of, for rehearsals.
+
+A world that differs from the rig's limits and from the sequence's prior is the normal case. Keys
+that are left out take what the rig file says of the same thing, or the simulator's own default.
+Attribute names are those of the simulator's parameters.
+"""
+
+from pathlib import Path
+from typing import Annotated, Any
+
+from pydantic import Field
+
+from orchestrator.config.document import Document, read_document
+from orchestrator.config.loading import build
+from orchestrator.config.quantity import Quantity, Strict
+
+Positive = Annotated[float, Quantity("1", above=0, most=1e6)]
+Tesla = Annotated[float, Quantity("T", above=0, most=1e6)]
+Seconds = Annotated[float, Quantity("s", least=0, most=1e6)]
+Volt = Annotated[float, Quantity("V", least=0, most=1e3)]
+Kelvin = Annotated[float, Quantity("K", above=0, most=400)]
+Ohm = Annotated[float, Quantity("ohm", above=0, most=1e9)]
+Watt = Annotated[float, Quantity("W", least=0, most=1e3)]
+Percent = Annotated[float, Quantity("percent", least=0, most=100)]
+PerTesla = Annotated[float, Quantity("1/T", least=-10, most=10)]
+PerTesla2 = Annotated[float, Quantity("1/T^2", least=-10, most=10)]
+Losses = Annotated[float, Quantity("W*s^2/T^2", least=0, most=1e6)]
+
+
+class AboutWorld(Strict):
+    """What the world is called, and the seed of its noise."""
+
+    name: Annotated[str, Field(pattern=r"^[a-z][a-z0-9-]{0,47}$")]
+    seed: Annotated[int, Field(ge=0, lt=2**63)] = 1
+
+
+class QuenchZone(Strict):
+    """Up to field ``to`` the coil quenches if it is ramped faster than ``rate``."""
+
+    to_t: Tesla = Field(alias="to")
+    rate_t_per_s: Annotated[float, Quantity("T/s", above=0, most=10)] = Field(alias="rate")
+
+
+class Part(Strict):
+    """A part of the world whose keys may be left out."""
+
+    def given(self) -> dict[str, Any]:
+        """What the file says, by the simulator's names."""
+        return self.model_dump(exclude_unset=True)
+
+
+class Coil(Part):
+    """The coil with its supply."""
+
+    coil_constant_t_per_a: Annotated[float, Quantity("T/A", above=0, most=10)] | None = Field(
+        default=None, alias="coil_constant"
+    )
+    inductance_h: Annotated[float, Quantity("H", above=0, most=1000)] | None = Field(
+        default=None, alias="inductance"
+    )
+    lead_resistance_ohm: Annotated[float, Quantity("ohm", least=0, most=1)] | None = Field(
+        default=None, alias="lead_resistance"
+    )
+    charge_voltage_max_v: Volt | None = Field(default=None, alias="charge_voltage_max")
+    field_lag_s: Seconds | None = Field(default=None, alias="field_lag")
+    voltage_noise_v: Volt | None = Field(default=None, alias="voltage_noise")
+    field_noise_t: Annotated[float, Quantity("T", least=0, most=1)] | None = Field(
+        default=None, alias="field_noise"
+    )
+    quench_decay_s: Seconds | None = Field(default=None, alias="quench_decay")
+    ramp_quench: list[QuenchZone] | None = None
+
+    def given(self) -> dict[str, Any]:
+        values = super().given()
+        if self.ramp_quench is not None:
+            zones = self.ramp_quench
+            values["ramp_quench"] = tuple((zone.to_t, zone.rate_t_per_s) for zone in zones)
+        return values
+
+
+class StagePart(Part):
+    """The sample stage and its thermometer."""
+
+    base_k: Kelvin | None = Field(default=None, alias="base")
+    maximum_k: Kelvin | None = Field(default=None, alias="maximum")
+    start_k: Kelvin | None = Field(default=None, alias="start")
+    heat_capacity_j_per_k: Annotated[float, Quantity("J/K", above=0, most=1e3)] | None = Field(
+        default=None, alias="heat_capacity"
+    )
+    cooling_w_per_k: Annotated[float, Quantity("W/K", above=0, most=1e3)] | None = Field(
+        default=None, alias="cooling"
+    )
+    heater_max_w: Watt | None = Field(default=None, alias="heater_max")
+    response_s: Seconds | None = Field(default=None, alias="response")
+    eddy_w_s2_per_t2: Losses | None = Field(default=None, alias="eddy_coefficient")
+    sample_lag_s: Seconds | None = Field(default=None, alias="sample_lag")
+    thermometer_lag_s: Seconds | None = Field(default=None, alias="thermometer_lag")
+    noise_k: Annotated[float, Quantity("K", least=0, most=10)] | None = Field(
+        default=None, alias="noise"
+    )
+
+
+class HeliumPart(Part):
+    """The helium bath."""
+
+    capacity_l: Annotated[float, Quantity("litre", above=0, most=1e4)] | None = Field(
+        default=None, alias="capacity"
+    )
+    level_percent: Percent | None = Field(default=None, alias="level")
+    static_w: Watt | None = Field(default=None, alias="static_heat")
+    ramp_w_s2_per_t2: Losses | None = Field(default=None, alias="ramp_losses")
+    switch_heater_w: Watt | None = Field(default=None, alias="switch_heater")
+
+
+class LockInPart(Part):
+    """Noise and pickup at the input of one lock-in, by the name it has in the rig."""
+
+    name: str
+    noise_v_per_rthz: Annotated[float, Quantity("V/Hz^0.5", least=0, most=1)] | None = Field(
+        default=None, alias="noise"
+    )
+    pickup_v_s_per_t: Annotated[float, Quantity("V*s/T", least=-1, most=1)] | None = Field(
+        default=None, alias="pickup"
+    )
+
+
+class TrueOrbit(Strict):
+    """One orbit of the sample, as it really is."""
+
+    frequency_t: Tesla = Field(alias="frequency")
+    mass: Annotated[float, Quantity("1", above=0, most=100)]
+    dingle_k: Annotated[float, Quantity("K", least=0, most=100)] = Field(alias="dingle")
+    amplitude: Annotated[float, Quantity("1", above=0, most=10)]
+    phase: Annotated[float, Quantity("1", least=-1, most=1)] = 0.0
+    harmonics: Annotated[int, Field(ge=1, le=10)] = 1
+
+
+class SamplePart(Strict):
+    """The sample, as it really is."""
+
+    resistance_ohm: Ohm = Field(alias="resistance")
+    magnetoresistance_per_t: PerTesla = Field(default=0.0, alias="magnetoresistance_linear")
+    magnetoresistance_per_t2: PerTesla2 = Field(default=0.0, alias="magnetoresistance_quadratic")
+    hall_density_m2: Annotated[float, Quantity("1/m^2", least=-1e22, most=1e22)] = Field(
+        alias="hall_density"
+    )
+    orbits: Annotated[list[TrueOrbit], Field(min_length=1, max_length=20)]
+
+
+class WorldFile(Strict):
+    """The whole simulated truth."""
+
+    about: AboutWorld = Field(alias="world")
+    sample: SamplePart
+    coil: Coil = Coil()
+    stage: StagePart = StagePart()
+    helium: HeliumPart = HeliumPart()
+    lock_ins: list[LockInPart] = Field(default_factory=list, alias="lockin")
+
+
+def load_world(path: str | Path) -> tuple[WorldFile, Document]:
+    """Read and check a world file. Raises ConfigError."""
+    document = read_document(path)
+    return build(WorldFile, document), document
