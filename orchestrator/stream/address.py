@@ -2,6 +2,7 @@
 
 import ipaddress
 import ssl
+import uuid
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -66,11 +67,13 @@ class BrokerAddress:
         return f"{self.host}:{self.port}"
 
     def client_options(self) -> dict[str, Any]:
-        """Keyword arguments of an `aiomqtt.Client` that reaches this broker."""
+        """Keyword arguments of an `aiomqtt.Client` that reaches this broker, anew each time."""
         context = None
         if self.tls:
             context = ssl.create_default_context(cafile=self.ca_file)
         return {
+            # Left to itself the client sends no identity, and the broker invents one.
+            "identifier": f"nightfield-{uuid.uuid4().hex[:12]}",
             "hostname": self.host,
             "port": self.port,
             "username": self.username,

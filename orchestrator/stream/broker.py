@@ -13,12 +13,23 @@ import signal
 import subprocess
 import sys
 import threading
+from collections.abc import Iterator
 from dataclasses import dataclass
 from types import TracebackType
 from typing import Any, Self
 
 HOST = "127.0.0.1"
 _READY = "nightfield broker ready on port "
+
+
+class _Steady(dict[str, Any]):
+    """A dictionary whose iteration is not disturbed by what is added or removed meanwhile."""
+
+    def __iter__(self) -> Iterator[str]:
+        return iter(tuple(self.keys()))
+
+    def items(self) -> Any:
+        return tuple(super().items())
 
 
 class BrokerStartError(Exception):
@@ -44,6 +55,10 @@ async def serve(port: int, until_stdin_closes: bool) -> None:
         with contextlib.suppress(NotImplementedError):  # Windows
             loop.add_signal_handler(number, ended.set)
     broker = Broker(_configuration(port))
+    # amqtt 0.12 walks these while other clients come and go, and then leaves the one that is
+    # connecting without an answer ("dictionary changed size during iteration").
+    for name in ("_subscriptions", "_sessions", "_retained_messages"):
+        setattr(broker, name, _Steady())
     await broker.start()
     # amqtt has no public way to learn the port chosen for port 0.
     instance = broker._servers["default"].instance

@@ -75,7 +75,7 @@ class PublisherCounts:
     connections, failures : int
         How often the broker was reached, and how often reaching it or talking to it failed.
     garbage, foreign : int
-        Messages that did not decode, and messages of another night.
+        Messages that did not decode, and messages of another night or rig.
     findings_dropped : int
         Findings that were replaced by newer ones before the engine took them.
     last_error : str
@@ -328,7 +328,7 @@ class Publisher:
             except MessageError:
                 self._count(garbage=1)
                 continue
-            if message.night != self._night:
+            if message.night != self._night or message.rig != self._rig:
                 self._count(foreign=1)
             elif isinstance(message, WantedMessage):
                 self._wanted[message.what].want(message.first, message.last)

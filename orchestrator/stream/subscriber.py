@@ -165,7 +165,7 @@ class Subscriber:
         if isinstance(message, StateMessage):
             self._readings.know_of(message.last_reading)
             self._events.know_of(message.last_event)
-            if message == self._state:  # amqtt may give a retained message twice
+            if message == self._state:  # a retained message may come twice
                 self.counts.duplicates += 1
                 return []
             self._state = message
@@ -200,6 +200,8 @@ class Subscriber:
         ]
 
     def _is_ours(self, message: Message) -> bool:
+        if message.rig != self._rig:  # amqtt gives new clients what others have subscribed to
+            return False
         if message.night == self._night:
             return True
         if self._only is not None:

@@ -336,6 +336,23 @@ def test_last_will_is_seen_when_the_night_process_is_killed(
     run(scene)
 
 
+def test_clients_that_come_and_go_at_once_are_all_served(broker: BrokerProcess) -> None:
+    """Ten at a time, each with its own topics, while a retained message is there for each."""
+
+    async def visit(number: int) -> None:
+        async with aiomqtt.Client("127.0.0.1", broker.port, timeout=4.0) as client:
+            for kind in ("reading", "event", "state"):
+                await client.subscribe(topic_of(f"visit-{number}", kind), qos=1)
+            state = topic_of(f"visit-{number}", "state")
+            await client.publish(state, b"{}", qos=1, retain=True)
+
+    async def scene() -> None:
+        for turn in range(3):
+            await asyncio.gather(*(visit(10 * turn + number) for number in range(10)))
+
+    run(scene)
+
+
 def test_broker_listens_on_the_loopback_address_alone(broker: BrokerProcess) -> None:
     """Safety promise 9."""
     listening = [
