@@ -337,7 +337,7 @@ def test_last_will_is_seen_when_the_night_process_is_killed(
 
 
 def test_clients_that_come_and_go_at_once_are_all_served(broker: BrokerProcess) -> None:
-    """The broker walks the retained messages for each newcomer, while others subscribe and leave."""
+    """It walks the retained messages for each newcomer while others subscribe and leave."""
 
     async def visit(number: int) -> None:
         async with aiomqtt.Client("127.0.0.1", broker.port, timeout=3.0) as client:
