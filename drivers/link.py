@@ -34,8 +34,6 @@ __all__ = [
 T = TypeVar("T")
 Trace = Callable[[float, str, str], None]
 
-_RETRY_PAUSE_S = 0.1
-
 
 @dataclass(slots=True)
 class Counters:
@@ -76,6 +74,7 @@ class Link:
         address: str,
         timeout_s: float,
         retries: int,
+        retry_pause_s: float,
         inline: bool,
         gap_s: float,
         trace: Trace | None,
@@ -85,7 +84,7 @@ class Link:
         self.counters = Counters()
         self._make_session = make_session
         self._session = make_session()
-        self._retries, self._gap_s = retries, gap_s
+        self._retries, self._retry_pause_s, self._gap_s = retries, retry_pause_s, gap_s
         self._worker: Worker | None = None
         self._inline, self._closed = inline, False
         # A job is at most three proofs and one exchange, behind one that was given up.
@@ -171,7 +170,7 @@ class Link:
                     raise
                 counters.retries += 1
             attempt += 1
-            await asyncio.sleep(_RETRY_PAUSE_S)
+            await asyncio.sleep(self._retry_pause_s)
 
     async def _attempt(self, text: str, parse: Callable[[str], T] | None) -> T:
         if self._closed:
@@ -256,6 +255,7 @@ async def open_link(
     name: str,
     timeout_s: float = 2.0,
     retries: int = 2,
+    retry_pause_s: float = 0.1,
     inline: bool,
     identity_query: str = "*IDN?",
     write_end: str = "\n",
@@ -278,6 +278,8 @@ async def open_link(
         For one reply.
     retries : int
         Further attempts of a failed query.
+    retry_pause_s : float
+        Before each of them.
     inline : bool
         True makes VISA calls directly in the event loop: for rehearsals, where a clock that jumps
         would not see a thread's time. False gives the session a thread of its own.
@@ -317,6 +319,7 @@ async def open_link(
         address=address,
         timeout_s=timeout_s,
         retries=retries,
+        retry_pause_s=retry_pause_s,
         inline=inline,
         gap_s=gap_s,
         trace=trace,

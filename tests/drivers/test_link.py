@@ -1,0 +1,471 @@
+"""Links against an instrument that is late, silent, garbled, doubled, closed, refused or hung."""
+
+import asyncio
+import socket
+import threading
+import time
+from collections.abc import Callable, Coroutine
+from typing import Any
+
+import pytest
+
+from drivers.link import (
+    BadReply,
+    Closed,
+    Link,
+    LinkError,
+    Timeout,
+    Unreachable,
+    WrongInstrument,
+    open_link,
+)
+from drivers.opening import visa_manager
+from tests.drivers.fake_instrument import IDENTITY, Answer, FakeInstrument, plain
+
+modes = pytest.mark.parametrize("inline", [True, False], ids=["inline", "thread"])
+
+
+def run(body: Callable[[], Coroutine[Any, Any, None]]) -> None:
+    asyncio.run(asyncio.wait_for(body(), 15))
+
+
+async def opened(fake: FakeInstrument, inline: bool, **changes: Any) -> Link:
+    settings: dict[str, Any] = {"timeout_s": 0.1, "retries": 2, "retry_pause_s": 0.0, **changes}
+    return await open_link(visa_manager(), fake.address, name="fake", inline=inline, **settings)
+
+
+def once(trigger: str, answer: Answer) -> Callable[[str], Answer]:
+    """Misbehave at the first message of this text only."""
+    left = [1]
+
+    def behaviour(message: str) -> Answer:
+        if message == trigger and left:
+            left.pop()
+            return answer
+        return plain(message)
+
+    return behaviour
+
+
+# -- opening ---------------------------------------------------------------------------------
+
+
+@modes
+def test_opening_asks_who_is_there_and_queries_are_counted(inline: bool) -> None:
+    async def body() -> None:
+        with FakeInstrument() as fake:
+            link = await opened(fake, inline)
+            assert link.identity == IDENTITY
+            assert [await link.query(f"N{i}?") for i in range(3)] == ["0", "1", "2"]
+            await link.write("SET 1")
+            counters = link.counters
+            assert (counters.exchanges, counters.retries, counters.errors) == (4, 0, 0)
+            assert counters.opened == fake.connections == 1
+            await link.close()
+
+    run(body)
+
+
+@modes
+def test_refused_port_is_told_at_once_with_its_reason(inline: bool) -> None:
+    async def body() -> None:
+        with socket.create_server(("127.0.0.1", 0)) as listener:
+            port = listener.getsockname()[1]
+        start_s = time.monotonic()
+        with pytest.raises(Unreachable, match=r"magnet at TCPIP.*: connection failed: .*refused"):
+            await open_link(
+                visa_manager(), f"TCPIP::127.0.0.1::{port}::SOCKET", name="magnet", inline=inline
+            )
+        assert time.monotonic() - start_s < 1.0
+
+    run(body)
+
+
+@modes
+def test_address_that_is_none_is_unreachable(inline: bool) -> None:
+    async def body() -> None:
+        with pytest.raises(Unreachable, match="magnet at nowhere") as caught:
+            await open_link(visa_manager(), "nowhere", name="magnet", inline=inline)
+        assert (caught.value.name, caught.value.address) == ("magnet", "nowhere")
+
+    run(body)
+
+
+@modes
+def test_silence_at_opening_is_a_timeout(inline: bool) -> None:
+    async def body() -> None:
+        with (
+            FakeInstrument(lambda message: Answer()) as fake,
+            pytest.raises(Timeout, match=r"no reply within 0\.1 s"),
+        ):
+            await opened(fake, inline)
+
+    run(body)
+
+
+# -- late, lost, cut, doubled, garbled ---------------------------------------------------------
+
+
+@modes
+def test_late_reply_is_never_given_to_the_next_query(inline: bool) -> None:
+    async def body() -> None:
+        late = once("N1?", Answer((b"1\n",), delay_s=0.15))
+        with FakeInstrument(late) as fake:
+            link = await opened(fake, inline, retries=0)
+            with pytest.raises(Timeout):
+                await link.query("N1?")
+            await asyncio.sleep(0.1)
+            assert await link.query("N2?") == "2"
+            assert link.counters.opened == fake.connections == 2
+            await link.close()
+
+    run(body)
+
+
+@modes
+def test_reply_that_the_instrument_gives_later_on_a_new_connection_is_refused(
+    inline: bool,
+) -> None:
+    async def body() -> None:
+        with FakeInstrument(once("N1?", Answer(held=b"1\n"))) as fake:
+            link = await opened(fake, inline, retries=0)
+            with pytest.raises(Timeout):
+                await link.query("N1?")
+            assert await link.query("N2?") == "2"
+            await link.close()
+
+    run(body)
+
+
+@modes
+def test_lost_reply_is_asked_for_again_and_counted(inline: bool) -> None:
+    async def body() -> None:
+        with FakeInstrument(once("N1?", Answer())) as fake:
+            link = await opened(fake, inline)
+            assert await link.query("N1?") == "1"
+            assert fake.said("N1?") == 2
+            counters = link.counters
+            assert (counters.retries, counters.timeouts, counters.errors) == (1, 1, 1)
+            await link.close()
+
+    run(body)
+
+
+@modes
+def test_retries_are_bounded(inline: bool) -> None:
+    async def body() -> None:
+        def deaf(message: str) -> Answer:
+            return plain(message) if message == "*IDN?" else Answer()
+
+        with FakeInstrument(deaf) as fake:
+            link = await opened(fake, inline, timeout_s=0.05, retries=3)
+            start_s = time.monotonic()
+            with pytest.raises(Timeout) as caught:
+                await link.query("N1?")
+            assert 0.2 <= time.monotonic() - start_s < 1.0
+            assert fake.said("N1?") == 4
+            assert caught.value.text == "N1?"
+            assert caught.value.sent
+            await link.close()
+
+    run(body)
+
+
+@modes
+def test_reply_without_its_end_is_a_timeout_that_shows_what_came(inline: bool) -> None:
+    async def body() -> None:
+        with FakeInstrument(once("N123?", Answer((b"12",)))) as fake:
+            link = await opened(fake, inline, retries=0)
+            with pytest.raises(Timeout, match="it began with b'12'"):
+                await link.query("N123?")
+            assert await link.query("N4?") == "4"
+            await link.close()
+
+    run(body)
+
+
+@modes
+def test_reply_in_pieces_is_put_together(inline: bool) -> None:
+    async def body() -> None:
+        with FakeInstrument(once("N123?", Answer((b"1", b"2", b"3\r", b"\n")))) as fake:
+            link = await opened(fake, inline)
+            assert await link.query("N123?") == "123"
+            assert link.counters.retries == 0
+            await link.close()
+
+    run(body)
+
+
+@modes
+def test_doubled_reply_is_refused_and_asked_for_again(inline: bool) -> None:
+    async def body() -> None:
+        with FakeInstrument(once("N1?", Answer((b"1\n1\n",)))) as fake:
+            link = await opened(fake, inline)
+            assert await link.query("N1?") == "1"
+            assert fake.said("N1?") == 2
+            assert await link.query("N2?") == "2"
+            await link.close()
+
+    run(body)
+
+
+@modes
+def test_copy_of_a_reply_that_follows_later_is_not_the_next_reply(inline: bool) -> None:
+    async def body() -> None:
+        with FakeInstrument(once("N1?", Answer((b"1\n", b"1\n")))) as fake:
+            link = await opened(fake, inline)
+            assert await link.query("N1?") == "1"
+            await asyncio.sleep(0.05)
+            assert await link.query("N2?") == "2"
+            assert link.counters.opened == 2
+            await link.close()
+
+    run(body)
+
+
+@modes
+def test_reply_outside_ascii_is_a_bad_reply(inline: bool) -> None:
+    async def body() -> None:
+        with FakeInstrument(once("N1?", Answer((b"\xff1\n",)))) as fake:
+            link = await opened(fake, inline, retries=0)
+            with pytest.raises(BadReply, match="not ASCII") as caught:
+                await link.query("N1?")
+            assert caught.value.reply == "\\xff1"
+            assert await link.query("N2?") == "2"
+            await link.close()
+
+    run(body)
+
+
+@modes
+def test_reply_that_never_ends_is_cut_off(inline: bool) -> None:
+    async def body() -> None:
+        with FakeInstrument(once("N1?", Answer((b"1" * (2 << 20),)))) as fake:
+            link = await opened(fake, inline, retries=0, timeout_s=5.0)
+            with pytest.raises(BadReply):
+                await link.query("N1?")
+            assert await link.query("N2?") == "2"
+            await link.close()
+
+    run(body)
+
+
+# -- closed ----------------------------------------------------------------------------------
+
+
+@modes
+@pytest.mark.parametrize("reset", [False, True], ids=["end", "reset"])
+@pytest.mark.parametrize("pieces", [(), (b"12",)], ids=["nothing", "part"])
+def test_peer_that_closes_is_an_error_at_once_and_not_a_busy_wait(
+    inline: bool, reset: bool, pieces: tuple[bytes, ...]
+) -> None:
+    async def body() -> None:
+        answer = Answer(pieces, close=True, reset=reset)
+        with FakeInstrument(once("N1?", answer)) as fake:
+            link = await opened(fake, inline, retries=0, timeout_s=5.0)
+            start_s, cpu_s = time.monotonic(), time.process_time()
+            with pytest.raises(Closed):
+                await link.query("N1?")
+            assert time.monotonic() - start_s < 1.0
+            assert time.process_time() - cpu_s < 0.5
+            assert await link.query("N2?") == "2"
+            await link.close()
+
+    run(body)
+
+
+@modes
+def test_connection_closed_while_idle_costs_neither_a_query_nor_a_write(inline: bool) -> None:
+    async def body() -> None:
+        with FakeInstrument() as fake:
+            link = await opened(fake, inline, retries=0)
+            for i in range(3):
+                fake.drop_clients()
+                await asyncio.sleep(0.02)
+                await link.write(f"SET {i}")
+                assert await link.query(f"N{i}?") == str(i)
+                assert fake.said(f"SET {i}") == 1
+            assert link.counters.errors == 0
+            await link.close()
+
+    run(body)
+
+
+@modes
+def test_instrument_that_went_away_is_unreachable(inline: bool) -> None:
+    async def body() -> None:
+        with FakeInstrument() as fake:
+            link = await opened(fake, inline)
+        await asyncio.sleep(0.02)
+        with pytest.raises(Unreachable) as caught:
+            await link.write("SET 1")
+        assert not caught.value.sent
+        await link.close()
+
+    run(body)
+
+
+@modes
+def test_another_instrument_after_reopening_is_found_out(inline: bool) -> None:
+    async def body() -> None:
+        with FakeInstrument() as fake:
+            link = await opened(fake, inline)
+            fake.behaviour = lambda message: Answer((b"SOMEBODY ELSE\n",))
+            fake.drop_clients()
+            await asyncio.sleep(0.02)
+            with pytest.raises(WrongInstrument) as caught:
+                await link.query("N1?")
+            assert caught.value.expected == IDENTITY
+            assert caught.value.identity == "SOMEBODY ELSE"
+            assert fake.said("N1?") == 0
+            await link.close()
+
+    run(body)
+
+
+@modes
+def test_closing_twice_is_safe_and_a_closed_link_says_so(inline: bool) -> None:
+    async def body() -> None:
+        with FakeInstrument() as fake:
+            link = await opened(fake, inline)
+            await link.close()
+            await link.close()
+            with pytest.raises(Closed, match="the link was closed"):
+                await link.query("N1?")
+            assert fake.said("N1?") == 0
+
+    run(body)
+
+
+# -- writes ----------------------------------------------------------------------------------
+
+
+@modes
+def test_message_that_sets_something_is_sent_once_whatever_happens(inline: bool) -> None:
+    async def body() -> None:
+        for answer in (Answer(), Answer(close=True), Answer((b"\xff\n",)), Answer((b"1\n1\n",))):
+            with FakeInstrument(once("SET 1;N1?", answer)) as fake:
+                link = await opened(fake, inline)
+                with pytest.raises(LinkError) as caught:
+                    await link.ask("SET 1;N1?", str, repeat=False)
+                assert caught.value.sent
+                assert await link.query("N2?") == "2"
+                assert fake.said("SET 1;N1?") == 1
+                await link.close()
+
+    run(body)
+
+
+@modes
+def test_message_that_could_not_go_out_is_tried_again(inline: bool) -> None:
+    async def body() -> None:
+        with FakeInstrument() as fake:
+            link = await opened(fake, inline)
+            fake.behaviour = once("*IDN?", Answer())
+            fake.drop_clients()
+            await asyncio.sleep(0.02)
+            await link.write("SET 1")
+            assert await link.query("N1?") == "1"
+            assert fake.said("SET 1") == 1
+            assert link.counters.retries == 1
+            await link.close()
+
+    run(body)
+
+
+# -- many at a time, cancelled, hung -----------------------------------------------------------
+
+
+@modes
+def test_exchanges_of_many_tasks_do_not_interleave(inline: bool) -> None:
+    async def body() -> None:
+        with FakeInstrument() as fake:
+            links = [await opened(fake, inline) for _ in range(3)]
+            replies = await asyncio.gather(*(links[i % 3].query(f"N{i}?") for i in range(300)))
+            assert replies == [str(i) for i in range(300)]
+            for link in links:
+                await link.close()
+
+    run(body)
+
+
+def test_cancelled_query_leaves_nothing_behind_for_the_next_and_does_not_hold_it_up() -> None:
+    async def body() -> None:
+        with FakeInstrument(once("N1?", Answer((b"1\n",), delay_s=0.3))) as fake:
+            link = await opened(fake, False, timeout_s=5.0)
+            task = asyncio.create_task(link.query("N1?"))
+            await asyncio.sleep(0.05)
+            task.cancel()
+            with pytest.raises(asyncio.CancelledError):
+                await task
+            start_s = time.monotonic()
+            assert await link.query("N2?") == "2"
+            assert time.monotonic() - start_s < 0.25
+            await asyncio.sleep(0.3)
+            assert await link.query("N3?") == "3"
+            await link.close()
+
+    run(body)
+
+
+def test_call_that_never_returns_is_left_behind_in_its_thread() -> None:
+    async def body() -> None:
+        with FakeInstrument() as fake:
+            link = await opened(fake, False, retries=0)
+            release = threading.Event()
+            session = link._session
+            session.exchange = lambda text, reply: str(release.wait())  # type: ignore[method-assign]
+            link._stall_s = 0.1
+            with pytest.raises(Timeout, match="did not return"):
+                await link.query("N1?")
+            assert await link.query("N2?") == "2"
+            release.set()
+            await link.close()
+
+    run(body)
+
+
+# -- bookkeeping -------------------------------------------------------------------------------
+
+
+@modes
+def test_trace_tells_time_direction_and_text(inline: bool) -> None:
+    async def body() -> None:
+        seen: list[tuple[float, str, str]] = []
+        ticks = iter(range(100))
+        with FakeInstrument(once("N2?", Answer(close=True))) as fake:
+            link = await opened(
+                fake,
+                inline,
+                retries=0,
+                now=lambda: float(next(ticks)),
+                trace=lambda *entry: seen.append(entry),
+            )
+            await link.query("N1?")
+            await link.write("SET 1")
+            with pytest.raises(Closed):
+                await link.query("N2?")
+            await link.close()
+        assert [(d, t) for _, d, t in seen] == [
+            (">", "N1?"),
+            ("<", "1"),
+            (">", "SET 1"),
+            (">", "N2?"),
+            ("!", "the instrument closed the connection"),
+        ]
+        assert [s for s, _, _ in seen] == sorted({s for s, _, _ in seen})
+
+    run(body)
+
+
+def test_least_gap_between_messages_is_kept() -> None:
+    async def body() -> None:
+        with FakeInstrument() as fake:
+            link = await opened(fake, True, gap_s=0.05)
+            start_s = time.monotonic()
+            for i in range(4):
+                await link.query(f"N{i}?")
+            assert time.monotonic() - start_s >= 0.15
+            await link.close()
+
+    run(body)
