@@ -2,9 +2,20 @@
 
 import asyncio
 from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+import pyvisa
 
 from drivers.capabilities import Gauge, LockIn, MagnetSupply, TemperatureController
-from orchestrator.config.rig import Rig
+from drivers.dialect import load_dialect
+from drivers.opening import (
+    open_gauge,
+    open_lock_in,
+    open_magnet_supply,
+    open_temperature_controller,
+)
+from orchestrator.config.rig import Rig, Spoken
 from orchestrator.readings import Channel
 
 MAGNET_UNITS = {
@@ -91,3 +102,61 @@ class Bench:
         """Close every link."""
         drivers = (self.magnet, self.stage, *self.lock_ins.values(), *self.gauges.values())
         await asyncio.gather(*(driver.close() for driver in drivers), return_exceptions=True)
+
+
+async def open_bench(
+    rig: Rig, manager: pyvisa.ResourceManager, *, inline: bool, dialects: Path = Path()
+) -> Bench:
+    """Open every instrument of a rig and prove who is there.
+
+    Parameters
+    ----------
+    rig : Rig
+        Addresses and dialects.
+    manager : pyvisa.ResourceManager
+        Of a VISA library, or of the simulated rig.
+    inline : bool
+        Exchanges run in the event loop itself, for a clock that jumps; otherwise in a thread of
+        each link's own.
+    dialects : Path
+        Folder to which the paths of a laboratory's own dialect files are relative.
+
+    Raises
+    ------
+    LinkError
+        An instrument does not answer, or is another one; nothing stays open.
+    DialectError
+        A dialect does not exist or is wrong.
+    """
+    opened: list[Any] = []
+
+    def link(name: str, spoken: Spoken) -> dict[str, Any]:
+        dialect = spoken.dialect
+        own = dialect.endswith(".toml")
+        return {
+            "manager": manager,
+            "address": spoken.address,
+            "dialect": load_dialect(dialects / dialect if own else dialect),
+            "name": name,
+            "inline": inline,
+        }
+
+    try:
+        magnet = await open_magnet_supply(
+            **link("magnet", rig.magnet), coil_constant_t_per_a=rig.magnet.coil_constant_t_per_a
+        )
+        opened.append(magnet)
+        stage = await open_temperature_controller(**link("stage", rig.stage))
+        opened.append(stage)
+        lock_ins: dict[str, LockIn] = {}
+        for one in rig.lock_ins:
+            lock_ins[one.name] = await open_lock_in(**link(one.name, one))
+            opened.append(lock_ins[one.name])
+        gauges: dict[str, Gauge] = {}
+        for gauge in rig.gauges:
+            gauges[gauge.name] = await open_gauge(**link(gauge.name, gauge))
+            opened.append(gauges[gauge.name])
+    except BaseException:
+        await asyncio.gather(*(driver.close() for driver in opened), return_exceptions=True)
+        raise
+    return Bench(magnet, stage, lock_ins, gauges)

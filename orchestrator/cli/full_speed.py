@@ -1,0 +1,76 @@
+"""A rehearsal at full speed: everything in one process, on a clock that jumps."""
+
+import asyncio
+from pathlib import Path
+
+from orchestrator.bench import channels_of, open_bench
+from orchestrator.cli.composition import (
+    Files,
+    Simulated,
+    addresses_of,
+    truth_of,
+    world_parameters,
+)
+from orchestrator.cli.folders import new_folder
+from orchestrator.cli.nights import Setting, describe, described_as_rehearsal, do_night
+from orchestrator.cli.outlets import InsideOutlet
+from orchestrator.cli.progress import NightProgress
+from orchestrator.engine.clock import JumpingLoop
+from orchestrator.engine.night import NightDone
+from orchestrator.planning.forecast import forecast
+from simulators.panels import panels
+from simulators.visa import attach
+from simulators.world import World
+
+
+def at_full_speed(
+    files: Files,
+    simulated: Simulated,
+    *,
+    seed: int,
+    into: Path,
+    evening_unix_s: float,
+    quiet: bool,
+) -> tuple[Path, NightDone]:
+    """Rehearse; returns the night's folder and what became of it."""
+    folder = new_folder(into, files.sequence.about.name)
+    description = described_as_rehearsal(
+        describe(files, night=folder.name, live=False, started_unix_s=evening_unix_s),
+        seed=seed,
+        world_text=simulated.document.text,
+        truth=truth_of(simulated.world),
+    )
+    expected_s = forecast(files.rig, files.sequence).duration_s
+
+    async def night(progress: NightProgress) -> NightDone:
+        clock = asyncio.get_running_loop().time
+        world = World(world_parameters(files.rig, simulated.world, seed), clock)
+        addresses = addresses_of(files.rig)
+        manager = attach({addresses[name]: panel for name, panel in panels(world).items()})
+        bench = await open_bench(files.rig, manager, inline=True)
+        setting = Setting(
+            folder=folder,
+            description=description,
+            commit="batched",
+            parallel=False,
+            clock=clock,
+            wall=lambda: evening_unix_s + clock(),
+            on_reading=progress.tell,
+        )
+        try:
+            return await do_night(
+                files,
+                bench,
+                setting,
+                lambda ledger: InsideOutlet(
+                    files.rig.about.name, folder.name, channels_of(files.rig), ledger
+                ),
+            )
+        finally:
+            await bench.close()
+
+    with (
+        NightProgress(expected_s, quiet=quiet, every=200) as progress,
+        asyncio.Runner(loop_factory=JumpingLoop) as runner,
+    ):
+        return folder, runner.run(night(progress))

@@ -1,0 +1,173 @@
+"""Putting a night together: ledger, gate, sentinel, sampler, outlet, and the engine."""
+
+import threading
+from collections.abc import Callable
+from dataclasses import dataclass, field, replace
+from importlib.metadata import version
+from pathlib import Path
+
+from orchestrator.bench import Bench, channels_of
+from orchestrator.cli.composition import Files
+from orchestrator.engine.night import NightDone, run_night
+from orchestrator.engine.sampler import Sampler
+from orchestrator.engine.work import Outlet, Work
+from orchestrator.interlocks.gate import Gate
+from orchestrator.interlocks.sentinel import Sentinel
+from orchestrator.ledger.records import NightDescription
+from orchestrator.ledger.writing import CommitMode, Ledger
+from orchestrator.planning.belief import Belief
+from orchestrator.planning.expansion import expand
+from orchestrator.planning.forecast import forecast
+from orchestrator.readings import Reading
+from orchestrator.stream.messages import NightState
+
+_STATE_EVERY_S = 2.0
+
+OpenOutlet = Callable[[Ledger], Outlet]
+
+
+@dataclass(frozen=True)
+class Setting:
+    """How a night is run, beside what it does.
+
+    Attributes
+    ----------
+    folder : Path
+        Where its ledger is made.
+    description : NightDescription
+        What the ledger says of it.
+    commit : {"each_second", "batched"}
+        How readings get to disk.
+    parallel : bool
+        Whether instruments are polled at once.
+    clock, wall : Callable[[], float]
+        The night's clock, and wall time.
+    on_reading : Callable[[Reading], None]
+        For a progress display.
+    park_asked : threading.Event
+        Set when the person at the keyboard wants the night to park.
+    """
+
+    folder: Path
+    description: NightDescription
+    commit: CommitMode
+    parallel: bool
+    clock: Callable[[], float]
+    wall: Callable[[], float]
+    on_reading: Callable[[Reading], None]
+    park_asked: threading.Event = field(default_factory=threading.Event)
+
+
+def describe(files: Files, *, night: str, live: bool, started_unix_s: float) -> NightDescription:
+    """What the ledger says of a night with these files."""
+    return NightDescription(
+        night=night,
+        rig=files.rig.about.name,
+        sequence=files.sequence.about.name,
+        mode="live" if live else "rehearsal",
+        started_unix_s=started_unix_s,
+        program_version=version("nightfield"),
+        rig_text=files.rig_document.text,
+        sequence_text=files.sequence_document.text,
+    )
+
+
+async def do_night(
+    files: Files, bench: Bench, setting: Setting, open_outlet: OpenOutlet
+) -> NightDone:
+    """Run a night on an opened bench; the ledger is complete on disk when this returns."""
+    channels = channels_of(files.rig)
+    expected = forecast(files.rig, files.sequence)
+    ledger = Ledger.create(
+        setting.folder,
+        description=setting.description,
+        channels=channels,
+        commit=setting.commit,
+        clock=setting.clock,
+        wall=setting.wall,
+    )
+    with ledger:
+        outlet = open_outlet(ledger)
+        try:
+            gate = Gate(bench, files.rig, files.rig_document, ledger, setting.clock)
+            sentinel = Sentinel(files.rig, channels, gate, setting.clock)
+            teller = _Teller(sentinel, gate, outlet, setting, expected.duration_s)
+            sampler = Sampler(
+                bench,
+                channels,
+                ledger,
+                sentinel,
+                interval_s=files.rig.sampling.interval_s,
+                parallel=setting.parallel,
+                clock=setting.clock,
+                wall=setting.wall,
+                on_reading=teller.tell,
+            )
+            work = Work(
+                rig=files.rig,
+                document=files.rig_document,
+                gate=gate,
+                sentinel=sentinel,
+                sampler=sampler,
+                ledger=ledger,
+                outlet=outlet,
+                clock=setting.clock,
+                belief=Belief.from_prior(files.sequence.prior),
+                park_asked=setting.park_asked,
+            )
+            done = await run_night(work, expand(files.sequence, files.rig), expected)
+            teller.end(done)
+            return done
+        finally:
+            ledger.commit()
+            outlet.close()
+
+
+class _Teller:
+    """Tells outlet and progress display of each reading, and the night's state now and then."""
+
+    def __init__(
+        self,
+        sentinel: Sentinel,
+        gate: Gate,
+        outlet: Outlet,
+        setting: Setting,
+        expected_s: float,
+    ) -> None:
+        self._sentinel, self._gate = sentinel, gate
+        self._outlet, self._setting = outlet, setting
+        self._started_s = setting.clock()
+        self._expected_s = max(expected_s, 1.0)
+        self._told_s = float("-inf")
+        self._state = NightState()
+
+    def tell(self, reading: Reading) -> None:
+        self._outlet.reading(reading)
+        self._setting.on_reading(reading)
+        if reading.time_s - self._told_s < _STATE_EVERY_S and reading.step == self._state.step:
+            return
+        self._told_s = reading.time_s
+        done_s = reading.time_s - self._started_s
+        self._state = NightState(
+            step=reading.step,
+            progress=min(1.0, done_s / self._expected_s),
+            expected_end_unix_s=reading.unix_s + max(0.0, self._expected_s - done_s),
+            trips=tuple(trip.name for trip in self._gate.trips),
+            margins={name: one.margin for name, one in self._sentinel.verdicts.items()},
+        )
+        self._outlet.state(self._state)
+
+    def end(self, done: NightDone) -> None:
+        trips = tuple(trip.name for trip in self._gate.trips)
+        self._outlet.state(
+            self._state.model_copy(
+                update={"outcome": done.outcome, "progress": 1.0, "trips": trips}
+            )
+        )
+
+
+def described_as_rehearsal(
+    description: NightDescription, *, seed: int, world_text: str, truth: list[dict[str, float]]
+) -> NightDescription:
+    """The same description with the seed and the truth of a simulated world."""
+    return replace(description, seed=seed, world_text=world_text, truth={"orbits": truth})
