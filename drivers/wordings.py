@@ -76,16 +76,15 @@ class Number:
     def encode(self, value: Value) -> str:
         """From SI."""
         wire = float(value) / self.factor
+        unit = "" if self.unit in {"", "1"} else f" {self.unit}"
         if not math.isfinite(wire):
             raise ValueError(f"{value!r} cannot be sent: it is not finite")
         if not self.least <= wire <= self.most:
-            raise ValueError(
-                f"{wire:.9g} {self.unit} is outside {self.least:g} to {self.most:g} {self.unit}"
-            )
+            raise ValueError(f"{wire:.9g}{unit} is outside {self.least:g} to {self.most:g}{unit}")
         if self.form != "d":
             return format(wire, self.form)
         if abs(wire - round(wire)) > 1e-6:
-            raise ValueError(f"{wire:.9g} {self.unit} is not a whole number")
+            raise ValueError(f"{wire:.9g}{unit} is not a whole number")
         return str(round(wire))
 
 

@@ -10,7 +10,7 @@ from drivers.link import LinkError, open_link
 from drivers.opening import visa_manager
 from tests.drivers.fake_instrument import Answer, FakeInstrument, plain
 
-TIMEOUT_S = 0.02
+TIMEOUT_S = 0.015
 FAULTS = {
     "late": lambda reply: Answer((reply,), delay_s=TIMEOUT_S * 1.2),
     "much later": lambda reply: Answer(held=reply),
