@@ -26,10 +26,19 @@ class Response(IntEnum):
 
 @dataclass(frozen=True, slots=True)
 class Sight:
-    """The newest values of one instrument, and the time at which they came."""
+    """The newest values of one instrument: when they were asked for, and when they came.
+
+    What they tell was so at some moment in between.
+    """
 
     taken_s: float
     values: Mapping[str, float]
+    asked_s: float = math.nan
+
+    @property
+    def earliest_s(self) -> float:
+        """The earliest moment of which the values may tell."""
+        return self.taken_s if math.isnan(self.asked_s) else self.asked_s
 
 
 @dataclass(frozen=True, slots=True)
@@ -145,9 +154,9 @@ def ramp_ceiling(magnet: Magnet) -> Condition:
         moved = _moved(look)
         if moved is None:
             return _NOTHING_YET
-        seconds, before, after = moved
-        rate = abs(after - before) / seconds
-        allowed = 1.1 * ceilings.over(before, after)[0] + 1e-4 / seconds
+        _, longest, before, after = moved
+        rate = abs(after - before) / longest
+        allowed = 1.1 * ceilings.over(before, after)[0] + 1e-4 / longest
         text = f"field moved at {60 * rate:.4f} T/min (allowed {60 * allowed:.4f} T/min)"
         return _verdict(1 - rate / allowed, text)
 
@@ -156,13 +165,14 @@ def ramp_ceiling(magnet: Magnet) -> Condition:
     )
 
 
-def _moved(look: Look) -> tuple[float, float, float] | None:
-    """Seconds between the magnet's two newest answers, and the field at both."""
+def _moved(look: Look) -> tuple[float, float, float, float] | None:
+    """Shortest and longest time between the magnet's two newest answers, and the field at both."""
     newest, before = look.newest.get("magnet"), look.before.get("magnet")
     if newest is None or before is None or newest.taken_s <= before.taken_s:
         return None
     return (
-        newest.taken_s - before.taken_s,
+        newest.earliest_s - before.taken_s,
+        newest.taken_s - before.earliest_s,
         before.values["field_t"],
         newest.values["field_t"],
     )
@@ -192,7 +202,7 @@ def current_collapse(magnet: Magnet) -> Condition:
         moved = _moved(look)
         if moved is None:
             return _NOTHING_YET
-        seconds, _, _ = moved
+        seconds = moved[1]
         scale = magnet.coil_constant_t_per_a
         before = abs(look.before["magnet"].values["current_a"])
         after = abs(look.newest["magnet"].values["current_a"])
@@ -207,7 +217,8 @@ def current_collapse(magnet: Magnet) -> Condition:
 def unexplained_voltage(magnet: Magnet, interval_s: float) -> Condition:
     """A terminal voltage that L dI/dt and the leads do not explain.
 
-    While the ramp is as it was for some readings, dI/dt is that of the two newest currents.
+    While the ramp is as it was for some readings, dI/dt is that of the two newest currents, with
+    the uncertainty of the moments at which they were so.
     Around a change of the ramp or of the switch the voltage may belong to any rate between rest
     and the one that was told, and the whole range counts as explained.
     """
@@ -218,14 +229,17 @@ def unexplained_voltage(magnet: Magnet, interval_s: float) -> Condition:
         moved = _moved(look)
         if moved is None:
             return _NOTHING_YET
-        seconds, _, _ = moved
+        shortest, longest, _, _ = moved
         newest, before = look.newest["magnet"].values, look.before["magnet"].values
-        slope = (newest["current_a"] - before["current_a"]) / seconds
+        change = newest["current_a"] - before["current_a"]
         leads = magnet.lead_resistance_ohm * newest["current_a"]
-        low = high = magnet.inductance_h * slope
-        if not _ramp_is_steady(look, magnet, interval_s):
+        slowest = magnet.inductance_h * change / longest
+        if _ramp_is_steady(look, magnet, interval_s) and shortest > 0.5 * longest:
+            fastest = magnet.inductance_h * change / shortest
+            low, high = min(slowest, fastest), max(slowest, fastest)
+        else:
             told = look.ramp.rate_t_per_s / scale * magnet.inductance_h
-            reach = max(abs(low), 0.0 if math.isnan(told) else told)
+            reach = max(abs(slowest), 0.0 if math.isnan(told) else told)
             low, high = -reach, reach
         voltage = newest["magnet_v"] - leads
         beyond = max(low - voltage, voltage - high, 0.0)
@@ -297,7 +311,7 @@ def stalled(interval_s: float, patience_s: float = 60.0) -> Condition:
         since = look.now_s - look.ramp.changed_s
         if moved is None or not look.ramp.ramping or since < patience_s:
             return Verdict(1.0, False, "not ramping")
-        seconds, before, after = moved
+        seconds, _, before, after = moved
         left = abs(look.ramp.target_t - after)
         step = look.ramp.rate_t_per_s * seconds
         if left <= max(2 * step, 1e-3):

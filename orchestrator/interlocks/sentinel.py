@@ -57,7 +57,7 @@ class Sentinel:
             if instrument in self._newest:
                 self._before[instrument] = self._newest[instrument]
             values = {name: reading.values[name] for name in self._names[instrument]}
-            self._newest[instrument] = Sight(taken_s, values)
+            self._newest[instrument] = Sight(taken_s, values, min(reading.time_s, taken_s))
         self._gate.observe(reading)
         look = Look(self._clock(), self._started_s, self._newest, self._before, self._gate.ramp)
         new = []

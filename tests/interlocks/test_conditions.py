@@ -162,3 +162,14 @@ def test_a_value_that_is_not_a_number_is_never_healthy() -> None:
     what = look(magnet(99, 5.0), magnet(100, math.nan), ramping(0.005, 10.0))
     for name in ("field-ceiling", "ramp-ceiling", "current-collapse", "unexplained-voltage"):
         assert judge(name, what)[0], name
+
+
+def test_a_field_read_at_an_uncertain_moment_is_given_the_longest_time() -> None:
+    """A reply that was 0.2 s under way may be of any moment in that time."""
+    rate = 0.01
+    before = Sight(100.0, magnet(0, 3.0).values, asked_s=99.8)
+    newest = Sight(100.9, magnet(0, 3.0 + 1.0 * rate).values, asked_s=100.9)
+    assert not judge("ramp-ceiling", look(before, newest))[0]
+    prompt = Sight(100.0, before.values, asked_s=100.0)
+    faster = Sight(100.9, magnet(0, 3.0 + 1.2 * rate).values, asked_s=100.9)
+    assert judge("ramp-ceiling", look(prompt, faster))[0]
