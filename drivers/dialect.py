@@ -14,7 +14,7 @@ from drivers.dialect_text import DialectError, DialectText, read_text
 from drivers.kinds import FLAG, VOCABULARIES, Kind
 from drivers.phrases import Look, Question, Setting, Template
 from drivers.wire_units import factor_to_si
-from drivers.wordings import Always, Bit, Coded, Number, Switch, Wording
+from drivers.wordings import Always, Bit, Coded, Number, Switch, TwoWays, Wording
 
 __all__ = ["Dialect", "DialectError", "load_dialect", "shipped_dialects"]
 
@@ -89,9 +89,7 @@ class Dialect:
         if isinstance(section, ValueSection) and section.always is not None:
             return Always(section.always)
         if quantity == FLAG:
-            if section.bit is not None:
-                return Bit(section.bit, section.inverted)
-            return Switch(section.on or "1", section.off or "0")
+            return _flag(section)
         try:
             factor = factor_to_si(quantity, section.unit, coil) * section.factor
         except ValueError as error:
@@ -106,6 +104,18 @@ class Dialect:
         if isinstance(section, SettingSection):
             return Number(factor, section.form, section.least, section.most, section.unit)
         return Number(factor)
+
+
+def _flag(section: Spelling) -> Wording:
+    switch = Switch(section.on or "1", section.off or "0")
+    bit = None if section.bit is None else Bit(section.bit, section.inverted)
+    if not isinstance(section, SettingSection):
+        return bit or switch
+    if bit is not None:
+        return TwoWays(switch, bit)
+    if section.reads_on is not None and section.reads_off is not None:
+        return TwoWays(switch, Switch(section.reads_on, section.reads_off))
+    return switch
 
 
 def shipped_dialects() -> list[str]:
@@ -160,20 +170,30 @@ def parse_dialect(name: str, text: DialectText) -> Dialect:
     return Dialect(name, kind, lacks, content, text)
 
 
+_CURES = {
+    "list_type": "write it as an array of tables: [[read]]",
+    "literal_error": "use one of the words allowed",
+    "finite_number": "give a finite number",
+}
+
+
 def _first_error(text: DialectText, error: ValidationError) -> DialectError:
     first = error.errors(include_url=False)[0]
     key = tuple(first["loc"])
-    given = first["input"]
+    if key[-1:] in {("float",), ("bool",)}:  # which of two types, no key
+        key = key[:-1]
     if first["type"] == "extra_forbidden":
         allowed = ", ".join(_known_keys(key[:-1]))
         return text.error("is no key of a dialect", key, cure=f"remove it, or use one of {allowed}")
     if first["type"] == "missing":
         return text.error("is missing", key, cure="add it")
-    cure = {"literal_error": f"use one of {', '.join(get_args(Kind))}"}.get(
-        first["type"], "see drivers/README.md"
-    )
     problem = first["msg"].removeprefix("Value error, ")
-    return text.error(problem[0].lower() + problem[1:], key, value=given, cure=cure)
+    return text.error(
+        problem[0].lower() + problem[1:],
+        key,
+        value=first["input"],
+        cure=_CURES.get(first["type"], "correct it as drivers/README.md shows"),
+    )
 
 
 def _known_keys(table: tuple[Any, ...]) -> Iterator[str]:

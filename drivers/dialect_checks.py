@@ -2,14 +2,14 @@
 
 import re
 
-from drivers.dialect_file import DialectFile, Spelling
+from drivers.dialect_file import DialectFile, SettingSection, Spelling
 from drivers.dialect_text import DialectText
 from drivers.kinds import FLAG, Vocabulary
 from drivers.phrases import IGNORED, Template
 from drivers.wire_units import allowed_units
 
 _NUMERIC = {"unit", "factor", "codes", "form", "least", "most"}
-_FLAGGED = {"on", "off", "bit", "inverted"}
+_FLAGGED = {"on", "off", "reads_on", "reads_off", "bit", "inverted"}
 
 
 def check_meaning(text: DialectText, content: DialectFile, words: Vocabulary) -> None:
@@ -59,7 +59,7 @@ def _check_reads(text: DialectText, content: DialectFile) -> None:
 
 
 def _check_values(text: DialectText, content: DialectFile, words: Vocabulary) -> None:
-    placeholders = {n for read in content.read for n in Template.of(read.reply).names}
+    placeholders = {n for read in content.read for n in Template.of(read.reply).names} - {IGNORED}
     for name, section in content.values.items():
         key = ("values", name)
         if name not in words.values:
@@ -120,44 +120,74 @@ def _check_spelling(
     text: DialectText, key: tuple[str, str], section: Spelling, quantity: str
 ) -> None:
     flag = quantity == FLAG
-    always = getattr(section, "always", None)
     given = section.model_fields_set
-    wrong = given & (_NUMERIC if flag else _FLAGGED)
-    if wrong:
+    if wrong := sorted(given & (_NUMERIC if flag else _FLAGGED)):
         what = "is on or off" if flag else f"is a number ({quantity})"
         raise text.error(
-            f"{key[1]} {what}, so this key has no meaning",
-            (*key, sorted(wrong)[0]),
-            cure="remove it",
+            f"{key[1]} {what}, so this key has no meaning", (*key, wrong[0]), cure="remove it"
         )
-    if always is not None:
-        if isinstance(always, bool) != flag:
+    if "always" in given:
+        _check_always(text, key, section, flag)
+    elif flag:
+        _check_flag(text, key, section)
+    else:
+        _check_number(text, key, section, quantity)
+
+
+def _check_always(text: DialectText, key: tuple[str, str], section: Spelling, flag: bool) -> None:
+    always = getattr(section, "always", None)
+    if isinstance(always, bool) != flag:
+        raise text.error(
+            "is of the wrong type",
+            (*key, "always"),
+            value=always,
+            cure="give true or false" if flag else "give a number, SI",
+        )
+    if beside := sorted(section.model_fields_set - {"always"}):
+        raise text.error("stands beside always", (*key, beside[0]), cure="remove one of the two")
+
+
+def _check_flag(text: DialectText, key: tuple[str, str], section: Spelling) -> None:
+    given = section.model_fields_set
+    setting = isinstance(section, SettingSection)
+    for on, off in (("on", "off"), ("reads_on", "reads_off")):
+        pair = {getattr(section, on, None), getattr(section, off, None)}
+        if len(pair) == 1 and pair != {None}:
+            raise text.error(f"{on} and {off} are the same", (*key, on), cure="make them differ")
+        if len(pair) == 2 and None in pair:
+            raise text.error(f"has only one of {on} and {off}", key, cure="give both")
+    if section.bit is not None:
+        words = {"reads_on"} if setting else {"on"}
+        if clash := sorted(given & words):
             raise text.error(
-                "must be true or false" if flag else "must be a number",
-                (*key, "always"),
-                value=always,
-                cure="correct it",
+                "a bit is not read as a word", (*key, clash[0]), cure="keep the bit or the words"
             )
-        if given - {"always"}:
-            raise text.error(
-                "stands beside always", (*key, *(given - {"always"})), cure="remove it"
-            )
-        return
-    if flag:
-        if section.bit is not None and given & {"on", "off"}:
-            raise text.error(
-                "a bit is not spelled as a word", (*key, "bit"), cure="keep bit, or on and off"
-            )
-        if section.inverted and section.bit is None:
-            raise text.error(
-                "only a bit can be inverted", (*key, "inverted"), cure="swap on and off"
-            )
-        return
+    elif section.inverted:
+        raise text.error(
+            "only a bit can be inverted", (*key, "inverted"), cure="exchange on and off instead"
+        )
+
+
+def _check_number(
+    text: DialectText, key: tuple[str, str], section: Spelling, quantity: str
+) -> None:
     allowed = allowed_units(quantity)
     if section.unit not in allowed:
         raise text.error(
             "is no unit that a dialect knows here" if section.unit else "has no unit",
             (*key, "unit"),
-            value=section.unit,
+            value=section.unit or None,
             cure=f"use one of {', '.join(allowed)}",
         )
+    if not isinstance(section, SettingSection):
+        return
+    if section.least > section.most:
+        raise text.error(
+            "is above most", (*key, "least"), value=section.least, cure="exchange the two"
+        )
+    if section.codes is not None:
+        plain = sorted(section.model_fields_set & {"form", "least", "most"})
+        if plain:
+            raise text.error(
+                "has no meaning beside codes", (*key, plain[0]), cure="remove one of the two"
+            )

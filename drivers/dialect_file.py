@@ -131,6 +131,8 @@ class SettingSection(Spelling):
     command: Annotated[str, AfterValidator(_command)]
     query: Message
     reply: Message = "{value}"
+    reads_on: Message | None = None
+    reads_off: Message | None = None
     joined: bool = True
     form: Annotated[str, AfterValidator(_form)] = ".9E"
     least: float = Field(default=-math.inf, validate_default=False)
@@ -149,8 +151,8 @@ class DialectFile(_Strict):
     set: dict[str, SettingSection] = Field(default_factory=dict)
 
 
-def resource_attributes(serial: SerialSection | None) -> dict[str, Any]:
-    """PyVISA attributes for a serial port; empty for other interfaces."""
+def serial_attributes(serial: SerialSection | None) -> dict[str, Any]:
+    """PyVISA attributes of a serial port; empty if the dialect does not speak of one."""
     if serial is None:
         return {}
     from pyvisa import constants

@@ -261,7 +261,7 @@ async def open_link(
     write_end: str = "\n",
     read_end: str = "\n",
     gap_s: float = 0.0,
-    attributes: dict[str, Any] | None = None,
+    serial: dict[str, Any] | None = None,
     trace: Trace | None = None,
     now: Callable[[], float] | None = None,
 ) -> Link:
@@ -289,8 +289,8 @@ async def open_link(
         What ends a message and a reply.
     gap_s : float
         Least time between two messages.
-    attributes : dict, optional
-        PyVISA resource attributes, such as ``baud_rate``.
+    serial : dict, optional
+        PyVISA attributes of a serial port, such as ``baud_rate``; not used elsewhere.
     trace : callable, optional
         Called in the event loop with time (s), ``">"``, ``"<"`` or ``"!"``, and text.
     now : callable, optional
@@ -301,7 +301,7 @@ async def open_link(
     LinkError
         Unreachable, Timeout, Closed or BadReply; nothing stays open.
     """
-    settings = WireSettings(timeout_s, read_end.encode("ascii"), attributes or {})
+    settings = WireSettings(timeout_s, read_end.encode("ascii"), serial or {})
 
     def make_session() -> Session:
         return Session(

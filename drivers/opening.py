@@ -6,7 +6,7 @@ from typing import TypeVar
 import pyvisa
 
 from drivers.dialect import Dialect
-from drivers.dialect_file import resource_attributes
+from drivers.dialect_file import serial_attributes
 from drivers.errors import WrongInstrument
 from drivers.gauge import ScpiGauge
 from drivers.kinds import Kind
@@ -161,7 +161,7 @@ async def _open(
         write_end=content.dialect.write_end,
         read_end=content.dialect.read_end,
         gap_s=content.dialect.pause_s,
-        attributes=resource_attributes(content.serial),
+        serial=serial_attributes(content.serial),
     )
     identity, pattern = link.identity, content.identity.pattern
     expected = None

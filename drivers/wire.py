@@ -59,13 +59,13 @@ class WireSettings:
         For opening, and for one line.
     read_end : bytes
         What ends a reply.
-    attributes : dict
-        PyVISA resource attributes to set after opening, such as ``baud_rate``.
+    serial : dict
+        PyVISA attributes of a serial port, such as ``baud_rate``; not used elsewhere.
     """
 
     timeout_s: float
     read_end: bytes
-    attributes: dict[str, Any]
+    serial: dict[str, Any]
 
 
 class Wire(Protocol):
@@ -278,8 +278,9 @@ def _prepared(
     resource: Any, settings: WireSettings, timeout_ms: int, given_up: Callable[[], bool]
 ) -> Wire:
     resource.timeout = timeout_ms
-    for attribute, value in settings.attributes.items():
-        setattr(resource, attribute, value)
+    if resource.interface_type == constants.InterfaceType.asrl:
+        for attribute, value in settings.serial.items():
+            setattr(resource, attribute, value)
     sock = _socket_of(resource)
     if sock is None:
         resource.read_termination = settings.read_end.decode("ascii")

@@ -1,5 +1,7 @@
 """Units that instruments speak, as factors to SI, by the quantity that they measure."""
 
+import math
+
 _PREFIXES = {"n": 1e-9, "u": 1e-6, "m": 1e-3, "": 1.0, "k": 1e3, "M": 1e6}
 _TIMES = {"s": 1.0, "min": 60.0, "h": 3600.0}
 
@@ -59,8 +61,10 @@ def factor_to_si(quantity: str, unit: str, coil_constant_t_per_a: float | None) 
     if unit in units:
         return units[unit]
     factor = CURRENT_UNITS.get(quantity, {})[unit]
-    if coil_constant_t_per_a is None:
-        raise ValueError(f"{unit} needs the coil constant of the magnet")
+    if coil_constant_t_per_a is None or not 0 < abs(coil_constant_t_per_a) < math.inf:
+        raise ValueError(
+            f"{unit} needs the magnet's coil constant, which is {coil_constant_t_per_a!r}"
+        )
     return factor * coil_constant_t_per_a
 
 

@@ -172,6 +172,22 @@ class Bit:
 
 
 @dataclass(frozen=True, slots=True)
+class TwoWays:
+    """A value that is sent in one wording and read back in another."""
+
+    sent: Wording
+    read: Wording
+
+    def decode(self, text: str) -> Value:
+        """As it is read."""
+        return self.read.decode(text)
+
+    def encode(self, value: Value) -> str:
+        """As it is sent."""
+        return self.sent.encode(value)
+
+
+@dataclass(frozen=True, slots=True)
 class Always:
     """A value that the instrument has no word for, and that is always the same."""
 
