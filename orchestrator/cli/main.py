@@ -12,6 +12,7 @@ from orchestrator.cli.new import new
 from orchestrator.cli.rehearse import rehearse
 from orchestrator.cli.run import run
 from orchestrator.cli.simulate import simulate
+from orchestrator.cli.watch import watch
 
 app = typer.Typer(
     name="nightfield",
@@ -25,6 +26,7 @@ for command in (
     forecast,
     rehearse,
     run,
+    watch,
     hold,
     park,
     acknowledge,

@@ -8,6 +8,8 @@ from orchestrator.interlocks.sentinel import Sentinel
 from orchestrator.ledger.writing import Ledger
 from orchestrator.readings import Channel, Reading
 
+Answer = tuple[float, float, dict[str, float]]  # asked at, came at, values
+
 _WAIT_SHARE = 0.8  # of the interval; who has not answered by then is late, and absent
 
 
@@ -51,7 +53,7 @@ class Sampler:
         self._clock = clock
         self._wall = wall
         self._on_reading = on_reading
-        self._late: dict[str, asyncio.Task[tuple[float, dict[str, float]]]] = {}
+        self._late: dict[str, asyncio.Task[Answer]] = {}
         self._next: asyncio.Future[Reading] = asyncio.get_running_loop().create_future()
         self.number = 0
         self.step = "start"
@@ -84,23 +86,24 @@ class Sampler:
         """Take one reading and hand it on."""
         asked_s, unix_s = self._clock(), self._wall()
         answers = await (self._poll_together() if self._parallel else self._poll_in_turn())
-        values, taken = dict(self._nothing), {}
-        for instrument, (taken_s, answer) in answers.items():
-            taken[instrument] = taken_s
+        values, taken, asked = dict(self._nothing), {}, {}
+        for instrument, (answer_asked_s, taken_s, answer) in answers.items():
+            asked[instrument], taken[instrument] = answer_asked_s, taken_s
             values.update(answer)
         self.number += 1
         reading = Reading(self.number, asked_s, unix_s, self.step, values, taken)
         self._ledger.append_reading(reading)
-        await self._sentinel.observe(reading)
+        await self._sentinel.observe(reading, asked)
         self._on_reading(reading)
         done, self._next = self._next, asyncio.get_running_loop().create_future()
         done.set_result(reading)
 
-    async def _read(self, instrument: str) -> tuple[float, dict[str, float]]:
+    async def _read(self, instrument: str) -> Answer:
+        asked_s = self._clock()
         values = await self._bench.read(instrument)
-        return self._clock(), values
+        return asked_s, self._clock(), values
 
-    async def _poll_in_turn(self) -> dict[str, tuple[float, dict[str, float]]]:
+    async def _poll_in_turn(self) -> dict[str, Answer]:
         answers = {}
         for instrument in self._bench.instruments:
             try:
@@ -109,7 +112,7 @@ class Sampler:
                 self.last_errors[instrument] = str(error)
         return answers
 
-    async def _poll_together(self) -> dict[str, tuple[float, dict[str, float]]]:
+    async def _poll_together(self) -> dict[str, Answer]:
         tasks = dict(self._late)
         for instrument in self._bench.instruments:
             if instrument not in tasks:

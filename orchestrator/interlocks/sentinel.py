@@ -4,7 +4,7 @@ The first answer is given here at once: hold the magnet, heaters off. What the n
 (wait for a person, park, leave the supply to discharge) follows from the trip's response.
 """
 
-from collections.abc import Awaitable, Callable
+from collections.abc import Awaitable, Callable, Mapping
 
 from orchestrator.config.rig import Rig
 from orchestrator.interlocks.conditions import (
@@ -51,13 +51,26 @@ class Sentinel:
         self._before: dict[str, Sight] = {}
         self.verdicts: dict[str, Verdict] = {}
 
-    async def observe(self, reading: Reading) -> tuple[Trip, ...]:
-        """Judge a reading; latch and answer what trips. Returns the new trips, the worst first."""
+    async def observe(self, reading: Reading, asked_s: Mapping[str, float]) -> tuple[Trip, ...]:
+        """Judge a reading; latch and answer what trips.
+
+        Parameters
+        ----------
+        reading : Reading
+            As it went to the ledger.
+        asked_s : Mapping[str, float]
+            When each instrument that answered had been asked; a late answer long before.
+
+        Returns
+        -------
+        tuple of Trip
+            The new ones, the worst first.
+        """
         for instrument, taken_s in reading.taken_s.items():
             if instrument in self._newest:
                 self._before[instrument] = self._newest[instrument]
             values = {name: reading.values[name] for name in self._names[instrument]}
-            self._newest[instrument] = Sight(taken_s, values, min(reading.time_s, taken_s))
+            self._newest[instrument] = Sight(taken_s, values, asked_s[instrument])
         self._gate.observe(reading)
         look = Look(self._clock(), self._started_s, self._newest, self._before, self._gate.ramp)
         new = []

@@ -14,8 +14,8 @@ from rich.text import Text
 from orchestrator.screen.picture import Picture, slope
 from orchestrator.screen.trace import plot
 from orchestrator.screen.verdict import Level, silent_instruments, stale_after_s, verdict
-from orchestrator.screen.wording import clock, event_text, number_text, plain, with_sd
-from orchestrator.units import duration_text, to_text
+from orchestrator.screen.wording import clock, event_text, number_text, ohm_text, plain, with_sd
+from orchestrator.units import duration_text
 
 Lines = list[Text]
 
@@ -117,7 +117,10 @@ def _doing(picture: Picture) -> Lines:
     started = picture.step_started.get(newest.step)
     what = _what(started.data if started else {})
     step = (f"{plain(newest.step)}", "bold")
-    lines = [_row("doing", step, what, _until(picture, picture.step_ends_s()))]
+    until = _until(picture, picture.step_ends_s())
+    if until and newest.step.endswith("-approach"):
+        until = f"; its sweep{until.removeprefix(',')}"
+    lines = [_row("doing", step, what, until)]
     parts = []
     if picture.steps:
         done = sum(1 for one in picture.steps if one.name in picture.steps_finished)
@@ -192,7 +195,7 @@ def _values(picture: Picture, now_unix_s: float) -> Lines:
     if ohm := picture.longitudinal_ohm():
         overload = "  OVERLOAD" if get(f"{ohm[0]}_overload") == 1 else ""
         parts = (plain(ohm[0]), (overload, "bold"), behind(ohm[0]))
-        lines.append(_row("resistance", _big(to_text(ohm[1], "ohm", 5)), *parts))
+        lines.append(_row("resistance", _big(ohm_text(ohm[1])), *parts))
     for channel, levels in picture.levels.items():
         name = channel.removesuffix("_percent")
         text = _big(number_text(get(channel, math.nan), 1, "%"))

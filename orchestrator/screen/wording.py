@@ -28,6 +28,16 @@ def number_text(value: float, decimals: int, unit: str) -> str:
     return f"{value:.{decimals}f} {unit}"
 
 
+def ohm_text(ohm: float) -> str:
+    """A resistance with five digits, zeros at the end included."""
+    if not math.isfinite(ohm):
+        return "- ohm"
+    for factor, unit in ((1e3, "kohm"), (1.0, "ohm"), (1e-3, "mohm")):
+        if abs(ohm) >= factor:
+            return f"{ohm / factor:#.5g} {unit}"
+    return f"{ohm * 1e6:#.5g} µohm"
+
+
 def with_sd(value: object, sd: object, unit: str = "") -> str:
     """A value and its standard deviation, both to two digits of the latter; a dash without one."""
     if not isinstance(value, int | float) or not math.isfinite(value):
