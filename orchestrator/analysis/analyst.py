@@ -25,7 +25,7 @@ from orchestrator.analysis.findings import OrbitFinding
 from orchestrator.analysis.gathering import CutSweep, Gathering
 from orchestrator.analysis.hall import analyse_hall
 from orchestrator.analysis.ladder import analyse_ladder
-from orchestrator.analysis.sweeps import AnalysisError, Sweep
+from orchestrator.analysis.sweeps import AnalysisError
 from orchestrator.ledger.reading import NightReader
 from orchestrator.stream.address import AddressError, BrokerAddress
 from orchestrator.stream.messages import EventMessage, Message, ReadingBatch
@@ -65,7 +65,7 @@ class Task:
             "after": self.sweeps[-1].name if self.sweeps else "",
             "sweeps": len(used),
             "orbits": [asdict(orbit) for orbit in orbits],
-            "hall": _hall([one.hall for one in used if one.hall], problems),
+            "hall": _hall(used, problems),
             "problem": "; ".join(problems),
         }
 
@@ -83,7 +83,11 @@ def _usable(sweep: CutSweep, problems: list[str]) -> bool:
     return True
 
 
-def _hall(sweeps: Sequence[Sweep], problems: list[str]) -> dict[str, Any] | None:
+def _hall(cuts: Sequence[CutSweep], problems: list[str]) -> dict[str, Any] | None:
+    problems += [
+        f'Hall: sweep "{one.name}": {one.hall_problem}' for one in cuts if one.hall_problem
+    ]
+    sweeps = [one.hall for one in cuts if one.hall and not one.hall_problem]
     if not sweeps:
         return None
     try:

@@ -56,12 +56,15 @@ class CutSweep:
         Those of them in which the Hall lock-in is there as well.
     problem : str
         Why there is no longitudinal sweep; empty if there is.
+    hall_problem : str
+        That the Hall lock-in was overloaded or silent for most of the sweep; empty if it was not.
     """
 
     name: str
     longitudinal: Sweep | None
     hall: Sweep | None = None
     problem: str = ""
+    hall_problem: str = ""
 
 
 class Gathering:
@@ -201,12 +204,15 @@ class Gathering:
                 poles=lock_in.poles,
             )
 
-        hall, of_hall = self._lock_ins.get("hall"), None
+        hall, of_hall, hall_problem = self._lock_ins.get("hall"), None, ""
         if hall is not None and f"{hall.name}_x_v" in rows:
             both = good & _good(rows, hall)
-            if int(both.sum()) >= 2:
+            used, most = int(both.sum()), int(good.sum())
+            if 2 * used < most:
+                hall_problem = f"{hall.name} overloaded or silent in {most - used} of {most}"
+            if used >= 2:
                 of_hall = sweep(both, rows[f"{hall.name}_x_v"][both] / hall.excitation_a)
-        return CutSweep(ended.name, sweep(good, None), of_hall)
+        return CutSweep(ended.name, sweep(good, None), of_hall, hall_problem=hall_problem)
 
 
 def _taken(instrument: str) -> str:

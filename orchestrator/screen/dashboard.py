@@ -12,7 +12,7 @@ from rich.console import Group, RenderableType
 from rich.text import Text
 
 from orchestrator.screen.picture import Picture, slope
-from orchestrator.screen.trace import plot
+from orchestrator.screen.trace import oscillation, plot
 from orchestrator.screen.verdict import Level, silent_instruments, stale_after_s, verdict
 from orchestrator.screen.wording import clock, event_text, number_text, ohm_text, plain, with_sd
 from orchestrator.units import duration_text
@@ -118,7 +118,8 @@ def _doing(picture: Picture) -> Lines:
     what = _what(started.data if started else {})
     step = (f"{plain(newest.step)}", "bold")
     until = _until(picture, picture.step_ends_s())
-    if until and newest.step.endswith("-approach"):
+    planned = picture.planned_step(newest.step)
+    if until and planned is not None and planned.name != newest.step:
         until = f"; its sweep{until.removeprefix(',')}"
     lines = [_row("doing", step, what, until)]
     parts = []
@@ -253,7 +254,10 @@ def _margins(picture: Picture, width: int, most: int) -> Lines:
     """The smallest margins, in two columns where they fit."""
     known = picture.state.margins if picture.state else {}
     if not known:
-        return [_title("Margins"), Text("  not told here; they come with the stream (a broker)")]
+        return [
+            _title("Margins"),
+            Text("  not known: they come with the stream, and no broker has told them"),
+        ]
     nearest = sorted(known.items(), key=lambda one: -1.0 if one[1] is None else one[1])[:most]
     cells = [_margin(name, margin) for name, margin in nearest]
     columns = 2 if width >= 76 else 1
@@ -335,9 +339,11 @@ def _plot(picture: Picture, width: int, height: int) -> Lines:
     if drawn is None:
         return []
     name, field_t, ohm = drawn
-    lines = plot(
-        field_t, ohm, width=width - 2, height=height, x_name="field / T", y_name="resistance / ohm"
-    )
+    x, y, x_name, y_name = field_t, ohm, "field / T", "resistance / ohm"
+    if (found := oscillation(field_t, ohm)) is not None:
+        (x, y), x_name = found, "1/field / (1/T)"
+        y_name = "resistance less a smooth background / ohm"
+    lines = plot(x, y, width=width - 2, height=height, x_name=x_name, y_name=y_name)
     if not lines:
         return []
     lines[0] = f"{lines[0]}, {plain(name)}"

@@ -228,9 +228,9 @@ class Picture:
         return started.time_s + planned.duration_s
 
     def planned_step(self, name: str) -> PlannedStep | None:
-        """A step of the forecast; the way to a sweep's start belongs to the sweep."""
-        name = name.removesuffix("-approach")
-        return next((one for one in self.steps if one.name == name), None)
+        """A step of the forecast; a way to a sweep's start that is not in it is the sweep's."""
+        by_name = {one.name: one for one in self.steps}
+        return by_name.get(name) or by_name.get(name.removesuffix("-approach"))
 
     def night_ends_s(self) -> float:
         """Night's time at which all should be done: what is left of this step, and the rest."""

@@ -8,15 +8,23 @@ import contextlib
 import time
 from collections.abc import AsyncGenerator, AsyncIterator, Callable
 from pathlib import Path
+from typing import Self
 
 from rich.console import Console, RenderableType
 from rich.live import Live
 
 from orchestrator.ledger.reading import NightReader
+from orchestrator.ledger.records import NightDescription
 from orchestrator.screen.dashboard import render
 from orchestrator.screen.picture import Picture
 from orchestrator.stream.address import BrokerAddress
-from orchestrator.stream.messages import EventMessage, FindingMessage, Message, ReadingBatch
+from orchestrator.stream.messages import (
+    EventMessage,
+    FindingMessage,
+    Message,
+    ReadingBatch,
+    StateMessage,
+)
 from orchestrator.stream.subscriber import Subscriber
 
 _POLL_S = 0.5
@@ -34,10 +42,42 @@ async def from_broker(
         yield message
 
 
+class _States:
+    """The newest state of a night, from its broker on this machine if it has one."""
+
+    def __init__(self, about: NightDescription) -> None:
+        self._about = about
+        self._newest: StateMessage | None = None
+        self._task: asyncio.Task[None] | None = None
+
+    def newest(self) -> StateMessage | None:
+        """The newest state; None if there is none that was not given before."""
+        newest, self._newest = self._newest, None
+        return newest
+
+    async def _listen(self, address: BrokerAddress) -> None:
+        async for message in Subscriber(address, rig=self._about.rig, night=self._about.night):
+            if isinstance(message, StateMessage):
+                self._newest = message
+
+    def __enter__(self) -> Self:
+        host, _, port = (self._about.broker or "").rpartition(":")
+        with contextlib.suppress(ValueError):  # no broker, or one that wants a password
+            address = BrokerAddress(host, int(port))
+            if address.loopback:
+                self._task = asyncio.create_task(self._listen(address))
+        return self
+
+    def __exit__(self, *error: object) -> None:
+        if self._task is not None:
+            self._task.cancel()
+
+
 async def from_folder(path: str | Path, *, poll_s: float = _POLL_S) -> AsyncGenerator[Message]:
     """A night's messages from its ledger, as it grows; ends when the night has.
 
-    Margins are not in the ledger: they come with the stream alone.
+    Margins are not in the ledger. If the night has a broker on this machine, its states are taken
+    from there meanwhile; without it all the rest is the same.
 
     Parameters
     ----------
@@ -51,7 +91,7 @@ async def from_folder(path: str | Path, *, poll_s: float = _POLL_S) -> AsyncGene
     LedgerError
         There is no ledger, or it cannot be read.
     """
-    with NightReader(path) as reader:
+    with NightReader(path) as reader, _States(reader.description()) as states:
         about, channels = reader.description(), reader.channels()
         night, rig = about.night, about.rig
         number = event_id = finding_id = 0
@@ -76,6 +116,8 @@ async def from_folder(path: str | Path, *, poll_s: float = _POLL_S) -> AsyncGene
                 number, found = readings[-1].number, True
                 yield ReadingBatch.of(readings, channels, night=night, rig=rig)
                 await asyncio.sleep(0)
+            if state := states.newest():
+                yield state
             if not found:
                 if ended:
                     return

@@ -3,8 +3,14 @@
 import math
 from collections.abc import Sequence
 
+import numpy as np
+from numpy.polynomial import Polynomial
+
 _DOTS = ((0x01, 0x08), (0x02, 0x10), (0x04, 0x20), (0x40, 0x80))  # Unicode 2800-28FF, row, column
 _LEAST_COLUMNS, _LEAST_ROWS = 12, 2
+_LEAST_POINTS = 100  # of a sweep whose background is taken off
+_LEAST_SPAN = 1.15  # its largest field over its smallest
+_BACKGROUND_ORDER = 4
 
 
 def plot(
@@ -72,6 +78,31 @@ def plot(
     room = columns - len(first) - len(last)
     lines.append(f"{'':{margin}} {first}{x_name[: max(room - 2, 0)]:^{room}}{last}")
     return [line[:width] for line in lines]
+
+
+def oscillation(
+    field_t: Sequence[float], ohm: Sequence[float]
+) -> tuple[list[float], list[float]] | None:
+    """What oscillates in a sweep, against 1/B, where it is even; for the eye, not for results.
+
+    Parameters
+    ----------
+    field_t, ohm : sequence of float
+        Field in tesla and resistance in ohm, in the order in which they came.
+
+    Returns
+    -------
+    tuple of two lists, or None
+        1/|B| in 1/T, and the resistance in ohm less a polynomial in B of fourth order. None while
+        the sweep is too short for a background to be told from its oscillations.
+    """
+    size, values = np.abs(np.asarray(field_t)), np.asarray(ohm)
+    good = np.isfinite(size) & np.isfinite(values) & (size > 0)
+    size, values = size[good], values[good]
+    if size.size < _LEAST_POINTS or size.max() < _LEAST_SPAN * size.min():
+        return None
+    smooth = Polynomial.fit(size, values, _BACKGROUND_ORDER)(size)
+    return (1 / size).tolist(), (values - smooth).tolist()
 
 
 def _line(begin: tuple[int, int], end: tuple[int, int]) -> list[tuple[int, int]]:

@@ -156,6 +156,17 @@ def test_a_sweep_that_cannot_be_analysed_does_not_take_the_others_with_it() -> N
     assert [round(orbit["frequency_t"]) for orbit in finding["orbits"]] == [410, 1130]
 
 
+def test_overloaded_hall_lock_in_is_told_and_spoils_nothing_else() -> None:
+    """As when its range is too small for the field; the orbits stand."""
+    readings = [damaged(one, rxy_overload=1.0) for one in READINGS]
+    (finding,) = through_a_stream([*event_messages(EVENTS), *batches(readings)])[-1:]
+    assert_both_orbits(finding)
+    assert finding["hall"] is None
+    size = SWEEPS[0].time_s.size
+    text = f'Hall: sweep "sweep-1": rxy overloaded or silent in {size} of {size}'
+    assert finding["problem"].startswith(text)
+
+
 def test_analysis_that_fails_is_a_finding_without_orbits(monkeypatch: pytest.MonkeyPatch) -> None:
     """Whatever the numerics raise."""
 

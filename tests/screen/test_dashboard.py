@@ -75,14 +75,25 @@ def test_a_good_night_says_so_first_and_then_what_it_does(width: int, height: in
 def test_larger_screen_shows_a_plot_and_every_margin() -> None:
     """What the small one has no room for."""
     small, large = frame(sweeping()), frame(sweeping(), 120, 40)
-    assert "resistance / ohm" not in "\n".join(small)
+    assert "background / ohm" not in "\n".join(small)
     assert "; 6 more are larger" in "\n".join(small)
     text = "\n".join(large)
     assert all(name in text for name in MARGINS)
-    assert "resistance / ohm, sweep-1" in text
-    (axis,) = [line for line in large if "field / T" in line]
-    assert axis.split() == ["3.00", "field", "/", "T", "8.40"]
+    assert "resistance less a smooth background / ohm, sweep-1" in text
+    (axis,) = [line for line in large if "1/field" in line]
+    assert axis.split() == ["0.119", "1/field", "/", "(1/T)", "0.333"]
     assert "Hall density (2080.0 ± 3.0) × 10¹⁵ /m²" in text
+
+
+def test_a_sweep_that_has_just_begun_is_drawn_as_it_is() -> None:
+    """Until its background can be told from its oscillations: resistance against field."""
+    scene = begun()
+    scene.event("step", "sweep-1", phase="started", type="field-sweep")
+    scene.run(90, "sweep-1", 3.0, 3.2)
+    lines = frame(scene, 120, 40)
+    assert "resistance / ohm, sweep-1" in "\n".join(lines)
+    (axis,) = [line for line in lines if "field / T" in line]
+    assert axis.split() == ["3.002", "field", "/", "T", "3.200"]
 
 
 @pytest.mark.parametrize(("width", "height"), SIZES)

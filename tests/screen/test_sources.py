@@ -41,11 +41,13 @@ def run(scene: Callable[[], Awaitable[None]]) -> None:
 class Writing:
     """A ledger into which a scene's messages are written at the scene's times."""
 
-    def __init__(self, folder: Path) -> None:
+    def __init__(self, folder: Path, broker: str | None = None) -> None:
         self.now_s = 0.0
         self.ledger = Ledger.create(
             folder,
-            description=NightDescription(NIGHT, RIG, "ladder", "rehearsal", START_UNIX_S, "0"),
+            description=NightDescription(
+                NIGHT, RIG, "ladder", "rehearsal", START_UNIX_S, "0", broker=broker
+            ),
             channels=CHANNELS,
             commit="batched",
             clock=lambda: self.now_s,
@@ -201,3 +203,42 @@ def test_broker_brings_all_that_came_before_and_the_margins(tmp_path: Path) -> N
     trace = picture.sweep_trace()
     assert trace is not None
     assert len(trace[1]) == 1800
+
+
+def test_folder_takes_the_margins_from_the_nights_own_broker(tmp_path: Path) -> None:
+    """And does without where there is none: the broker is gone, or not on this machine."""
+    margins: list[object] = []
+
+    async def look(folder: Path) -> None:
+        picture = await watch(from_folder(folder), a_console()[0], once=True)
+        assert picture.newest is not None
+        assert picture.newest.number == 2460
+        margins.append(picture.state.margins if picture.state else None)
+
+    async def scene() -> None:
+        with start_broker_process() as broker:
+            writing = Writing(tmp_path / "with", f"127.0.0.1:{broker.port}")
+            writing.write(sweeping().messages)
+            publisher = Publisher(
+                BrokerAddress(port=broker.port),
+                rig=RIG,
+                night=NIGHT,
+                open_source=lambda: NightReader(tmp_path / "with"),
+            )
+            publisher.update(NightState(step="sweep-1", margins=MARGINS))
+            publisher.start()
+            end_s = time.monotonic() + 5
+            while publisher.counts.readings < 2460:
+                assert time.monotonic() < end_s
+                await asyncio.sleep(0.05)
+            await look(tmp_path / "with")
+            publisher.stop()
+        await look(tmp_path / "with")
+        far = Writing(tmp_path / "far", "measure.example:1883")
+        far.write(sweeping().messages)
+        await look(tmp_path / "far")
+        for one in (writing, far):
+            one.ledger.close()
+
+    run(scene)
+    assert margins == [MARGINS, None, None]

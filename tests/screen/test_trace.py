@@ -2,7 +2,7 @@
 
 import math
 
-from orchestrator.screen.trace import plot
+from orchestrator.screen.trace import oscillation, plot
 
 
 def dots(lines: list[str]) -> set[tuple[int, int]]:
@@ -61,3 +61,17 @@ def test_nothing_to_draw_draws_nothing() -> None:
     assert lines([1.0, math.nan, 2.0], [math.nan, 1.0, 3.0]) == []
     assert lines([1.0, 2.0], [1.0, 2.0], width=12) == lines([1.0, 2.0], [1.0, 2.0], height=4) == []
     assert len({row for _, row in dots(lines([1.0, 2.0], [3.0, 3.0]))}) == 1
+
+
+def test_background_is_taken_off_and_the_oscillation_left() -> None:
+    """A cosine of 1/B on a parabola comes back to a twentieth of its amplitude."""
+    field_t = [4 + 0.004 * i for i in range(1501)]
+    pure = [0.3 * math.cos(2 * math.pi * 410 / one) for one in field_t]
+    ohm = [100 + 0.2 * one**2 + wave for one, wave in zip(field_t, pure, strict=True)]
+    found = oscillation(field_t, ohm)
+    assert found is not None
+    assert math.isclose(found[0][0], 0.25)
+    assert max(abs(a - b) for a, b in zip(found[1], pure, strict=True)) < 0.015
+    assert oscillation(field_t[:99], ohm[:99]) is None
+    assert oscillation(field_t[:140], ohm[:140]) is None
+    assert oscillation([0.0] * 200, [1.0] * 200) is None
