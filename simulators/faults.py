@@ -20,7 +20,7 @@ class FaultyPanel(FrontPanel):
     garbled : bool
         Every second character of an answer is wrong.
     ignores_writes : bool
-        Messages without a question mark are dropped, without an error.
+        Orders are dropped, alone and out of a joined message, without an error.
     frozen : bool
         A query is answered as it was answered last, or the first time it is asked.
     replies : dict
@@ -55,7 +55,9 @@ class FaultyPanel(FrontPanel):
         return reply
 
     def _answer(self, line: str) -> str | None:
-        if self.deaf or (self.ignores_writes and "?" not in line):
+        if self.ignores_writes:
+            line = ";".join(unit for unit in line.split(";") if "?" in unit)
+        if self.deaf or not line:
             return None
         if line in self.replies:
             return None if self.silent else self.replies[line]

@@ -1,6 +1,7 @@
 """A rehearsal at full speed: everything in one process, on a clock that jumps."""
 
 import asyncio
+from collections.abc import Callable, Mapping
 from pathlib import Path
 
 from orchestrator.bench import channels_of, open_bench
@@ -18,9 +19,16 @@ from orchestrator.cli.progress import NightProgress
 from orchestrator.engine.clock import JumpingLoop
 from orchestrator.engine.night import NightDone
 from orchestrator.planning.forecast import forecast
+from simulators.front_panel import FrontPanel
 from simulators.panels import panels
 from simulators.visa import attach
 from simulators.world import World
+
+Meddle = Callable[[World, dict[str, FrontPanel]], Mapping[str, FrontPanel]]
+
+
+def _leave_alone(world: World, given: dict[str, FrontPanel]) -> Mapping[str, FrontPanel]:
+    return given
 
 
 def at_full_speed(
@@ -31,8 +39,13 @@ def at_full_speed(
     into: Path,
     evening_unix_s: float,
     quiet: bool,
+    meddle: Meddle = _leave_alone,
 ) -> tuple[Path, NightDone]:
-    """Rehearse; returns the night's folder and what became of it."""
+    """Rehearse; returns the night's folder and what became of it.
+
+    ``meddle`` is given the world and the panels before the night, and returns the panels that are
+    attached: a place to put faults in.
+    """
     folder = new_folder(into, files.sequence.about.name)
     description = described_as_rehearsal(
         describe(files, night=folder.name, live=False, started_unix_s=evening_unix_s),
@@ -46,7 +59,8 @@ def at_full_speed(
         clock = asyncio.get_running_loop().time
         world = World(world_parameters(files.rig, simulated.world, seed), clock)
         addresses = addresses_of(files.rig)
-        manager = attach({addresses[name]: panel for name, panel in panels(world).items()})
+        attached = meddle(world, panels(world))
+        manager = attach({addresses[name]: panel for name, panel in attached.items()})
         bench = await open_bench(files.rig, manager, inline=True)
         setting = Setting(
             folder=folder,

@@ -53,7 +53,7 @@ def render(picture: Picture, *, now_unix_s: float, width: int, height: int) -> R
     margins = _margins(picture, width, most=_MARGINS if height < 36 else 12)
     findings = _findings(picture, most=3 if height < 36 else 6)
     sections = [*body, *([trips] if trips else [margins]), findings]
-    if trips and height >= 36:
+    if trips and height >= 36 and picture.state is not None:
         sections.insert(-1, margins)
     used = len(head) + sum(len(one) + 1 for one in sections)
     left = height - used - 1
