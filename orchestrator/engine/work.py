@@ -2,7 +2,7 @@
 
 import threading
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any, Protocol
 
 from orchestrator.config.document import Document
@@ -67,6 +67,7 @@ class Work:
     park_asked: threading.Event
     parking: bool = False
     findings_taken: int = 0
+    overloaded: set[str] = field(default_factory=set)
 
     def event(
         self, kind: str, name: str, text: str = "", severity: str = "info", **data: Any
@@ -88,6 +89,7 @@ class Work:
         reading = await self.sampler.next()
         await self._see_to_requests()
         self._take_findings()
+        self._tell_overloads(reading)
         held_since_s: float | None = None
         while (trip := self._trip_that_counts()) is not None:
             if self.parking or trip.response > Response.HOLD:
@@ -107,6 +109,20 @@ class Work:
         while self.clock() < end_s:
             reading = await self.next_reading()
         return reading
+
+    def _tell_overloads(self, reading: Reading) -> None:
+        """An overloaded lock-in spoils data, not the rig: it is told once, and again when over."""
+        for one in self.rig.lock_ins:
+            if one.name not in reading.taken_s:
+                continue
+            overload = reading.values[f"{one.name}_overload"] != 0
+            if overload and one.name not in self.overloaded:
+                self.overloaded.add(one.name)
+                text = f"{one.name} is overloaded at {one.sensitivity_v:g} V: its readings are lost"
+                self.event("warning", f"overload-{one.name}", text, "medium")
+            elif not overload and one.name in self.overloaded:
+                self.overloaded.discard(one.name)
+                self.event("warning", f"overload-{one.name}", f"{one.name} reads again")
 
     def _trip_that_counts(self) -> Trip | None:
         least = Response.DISCHARGE if self.parking else Response.HOLD

@@ -11,7 +11,7 @@ from rich.console import Console
 from orchestrator.screen.dashboard import render
 from orchestrator.screen.picture import Picture
 from orchestrator.screen.verdict import Level, verdict
-from orchestrator.screen.wording import clock, with_sd
+from orchestrator.screen.wording import clock, day, number_text, with_sd
 from tests.screen.scenes import FINDING, MARGINS, NIGHT, ORBITS, Scene, begun, sweeping
 
 SIZES = ((80, 24), (120, 40))
@@ -67,8 +67,8 @@ def test_a_good_night_says_so_first_and_then_what_it_does(width: int, height: in
     assert row(lines, "resistance").endswith(" ohm   rxx")
     text = "\n".join(lines)
     assert "ramp-ceiling         █░░░░░░░░░ 0.12" in text
-    assert "F 410.021 ± 0.012 T   m 0.18990 ± 0.00080 mₑ   T_D 1.302 ± 0.021 K   S/N 212" in text
-    assert "F 1130.40 ± 0.31 T   mass: wants two temperatures   S/N 11" in text
+    assert "F 410.021 ± 0.012 T  m 0.18990 ± 0.00080 mₑ  T_D 1.302 ± 0.021 K  S/N 212" in text
+    assert "F 1130.40 ± 0.31 T  mass: wants two temperatures  S/N 11" in text
     assert f"{clock(scene.unix_s - 1800, seconds=True)}  sweep-1 started" in text
 
 
@@ -76,7 +76,7 @@ def test_larger_screen_shows_a_plot_and_every_margin() -> None:
     """What the small one has no room for."""
     small, large = frame(sweeping()), frame(sweeping(), 120, 40)
     assert "background / ohm" not in "\n".join(small)
-    assert "; 6 more are larger" in "\n".join(small)
+    assert "; 6 larger ones left out" in "\n".join(small)
     text = "\n".join(large)
     assert all(name in text for name in MARGINS)
     assert "resistance less a smooth background / ohm, sweep-1" in text
@@ -170,14 +170,15 @@ def test_things_to_look_at_are_named() -> None:
 def test_the_end_of_a_night_and_its_loss_are_told_apart() -> None:
     """Ended well, ended by a trip, and a process that has vanished."""
     scene = sweeping()
-    scene.event("night", "ended", "done", outcome="done", parked="done")
+    scene.event("night", "ended", "done", outcome="done", parked="parked")
     lines = frame(scene, later_s=5 * 86400)
     assert lines[0].startswith(" NIGHT OVER ")
-    assert lines[0].endswith("last read 5 days ago")
-    assert "parking: done" in row(lines, "doing")
+    assert lines[0].endswith(f"last read {day(scene.unix_s)}")
+    assert row(lines, "doing").endswith(f"ended {clock(scene.unix_s)}; the rig is parked")
     assert level(scene) == Level.OVER
     scene = sweeping()
-    scene.event("night", "ended", "helium", outcome="level-helium", parked="done")
+    scene.event("night", "ended", "helium", outcome="level-helium", parked="not at all")
+    assert row(frame(scene), "doing").endswith("; parking: not at all")
     assert frame(scene)[1] == " ! ended by level-helium"
     scene = sweeping()
     scene.state(outcome="lost")
@@ -211,6 +212,26 @@ def test_colours_only_repeat_what_words_say() -> None:
     assert not colour.search(texts[0])
     assert colour.search(texts[1])
     assert style.sub("", texts[0]) == style.sub("", texts[1])
+
+
+def test_output_without_unicode_spells_signs_out() -> None:
+    """As when it is piped into a file on a machine with an old code page; no plot, no failure."""
+    scene = sweeping()
+    file = io.TextIOWrapper(io.BytesIO(), encoding="ascii")
+    console = Console(file=file, width=120, height=40)
+    shown = render(
+        picture_of(scene),
+        now_unix_s=scene.unix_s,
+        width=120,
+        height=40,
+        encoding=console.encoding,
+    )
+    console.print(shown)
+    file.seek(0)
+    text = file.read()
+    assert "F 410.021 +- 0.012 T  m 0.18990 +- 0.00080 m_e" in text
+    assert "ramp-ceiling         #......... 0.12" in text
+    assert "?" not in text
 
 
 def test_what_comes_cannot_command_the_terminal_or_break_the_screen() -> None:
@@ -265,3 +286,15 @@ def test_values_are_shown_to_two_digits_of_their_error() -> None:
     assert with_sd(410.02134, None, "T") == "410.02 T"
     assert with_sd(None, 1.0) == "-"
     assert with_sd(ORBITS[1]["mass"], None) == "-"
+    assert number_text(-0.00001, 4, "T") == "0.0000 T"
+    assert number_text(math.nan, 4, "T") == "- T"
+
+
+def test_long_names_leave_the_age_of_the_reading_on_the_screen() -> None:
+    """A night whose name is longer than the line."""
+    scene = sweeping()
+    for at, message in enumerate(scene.messages):
+        scene.messages[at] = message.model_copy(update={"night": "long" * 40})
+    line = frame(scene)[0]
+    assert line.startswith(" ALL IS WELL  lantern-cellar · longlong")
+    assert line.endswith("…  read 1 s ago")
