@@ -14,7 +14,15 @@ from rich.text import Text
 from orchestrator.screen.picture import Picture, slope
 from orchestrator.screen.trace import oscillation, plot
 from orchestrator.screen.verdict import Level, silent_instruments, stale_after_s, verdict
-from orchestrator.screen.wording import clock, event_text, number_text, ohm_text, plain, with_sd
+from orchestrator.screen.wording import (
+    clock,
+    day,
+    event_text,
+    number_text,
+    ohm_text,
+    plain,
+    with_sd,
+)
 from orchestrator.units import duration_text
 
 Lines = list[Text]
@@ -29,13 +37,29 @@ _NAME = 13  # columns of a row's name
 _LEAST_PLOT = 7
 _MOST_PLOT = 22
 _MARGINS = 6
+_SPELT_OUT = str.maketrans(
+    {
+        "·": "-",
+        "█": "#",
+        "░": ".",
+        "±": "+-",
+        "ₑ": "_e",
+        "×": "x",
+        "…": "~",
+        "¹": "^1",
+        "⁵": "5",
+        "²": "2",
+    }
+)
 _AT_REST_T_PER_S = 2e-6
 _BAR = 10
 _VALUE = 13
 _STEADY_K_PER_MIN = 0.002
 
 
-def render(picture: Picture, *, now_unix_s: float, width: int, height: int) -> RenderableType:
+def render(
+    picture: Picture, *, now_unix_s: float, width: int, height: int, encoding: str = "utf-8"
+) -> RenderableType:
     """The screen as lines of text, at most `height` of at most `width` characters.
 
     Parameters
@@ -46,7 +70,10 @@ def render(picture: Picture, *, now_unix_s: float, width: int, height: int) -> R
         Wall time of the look, seconds since 1970.
     width, height : int
         Room in characters; made for 80 by 24 and more.
+    encoding : str
+        Of what it is written to; without Unicode there is no plot, and signs are spelt out.
     """
+    unicode = encoding.lower().startswith("utf")
     head = _head(picture, now_unix_s, width)
     body = [_doing(picture), _values(picture, now_unix_s)]
     trips = _trips(picture)
@@ -59,7 +86,7 @@ def render(picture: Picture, *, now_unix_s: float, width: int, height: int) -> R
     left = height - used - 1
     events = 3 if height < 36 else 6
     room = min(left - (events + 2), _MOST_PLOT)
-    if room >= _LEAST_PLOT and (drawn := _plot(picture, width, room)):
+    if unicode and room >= _LEAST_PLOT and (drawn := _plot(picture, width, room)):
         sections.append(drawn)
         left -= len(drawn) + 1
     if left >= 2:
@@ -69,7 +96,9 @@ def render(picture: Picture, *, now_unix_s: float, width: int, height: int) -> R
         if section:
             lines = [*lines, Text(), *section]
     for line in lines:
-        line.truncate(width, overflow="ellipsis")
+        if not unicode:
+            line.plain = line.plain.translate(_SPELT_OUT).encode("ascii", "replace").decode()
+        line.truncate(width, overflow="ellipsis" if unicode else "crop")
         line.no_wrap = True
     return Group(*lines[:height])
 
@@ -94,8 +123,9 @@ def _head(picture: Picture, now_unix_s: float, width: int) -> Lines:
         old = not picture.outcome and age_s > stale_after_s(picture)
         heard = f"{'LAST READ' if old else 'read'} {duration_text(age_s)} ago"
         if age_s > 86400:
-            heard = f"last read {age_s / 86400:.0f} days ago"
-    left = f" {found.headline}  {whose}"
+            heard = f"last read {day(picture.newest.unix_s)}"
+    room = max(0, width - len(found.headline) - len(heard) - 6)
+    left = f" {found.headline}  {whose if len(whose) <= room else whose[: max(room - 1, 0)] + '…'}"
     space = max(2, width - len(left) - len(heard) - 1)
     banner = Text(f"{left}{'':{space}}{heard} ", style=_STYLES[found.level])
     lines = [banner]
@@ -113,7 +143,8 @@ def _doing(picture: Picture) -> Lines:
     if picture.outcome:
         parked = picture.ended.data.get("parked") if picture.ended else None
         text = f"nothing any more; ended {clock(picture.ended.unix_s)}" if picture.ended else "?"
-        return [_row("doing", text, f", parking: {plain(str(parked))}" if parked else "")]
+        rest = "; the rig is parked" if parked == "parked" else f"; parking: {plain(str(parked))}"
+        return [_row("doing", text, rest if parked else "")]
     started = picture.step_started.get(newest.step)
     what = _what(started.data if started else {})
     step = (f"{plain(newest.step)}", "bold")
@@ -264,7 +295,7 @@ def _margins(picture: Picture, width: int, most: int) -> Lines:
     rows = math.ceil(len(cells) / columns)
     title = "Margins, the smallest first (1 at rest, 0 trips)"
     if len(known) > len(nearest):
-        title += f"; {len(known) - len(nearest)} more are larger"
+        title += f"; {len(known) - len(nearest)} larger ones left out"
     lines = [_title(title)]
     for row in range(rows):
         line = Text("  ")
@@ -323,7 +354,7 @@ def _orbit(orbit: Mapping[str, Any]) -> str:
     ratio = get("signal_to_noise")
     if isinstance(ratio, int | float):
         parts.append(f"S/N {ratio:.0f}")
-    return "   ".join(parts)
+    return "  ".join(parts)
 
 
 def _list(value: object) -> Iterable[object]:

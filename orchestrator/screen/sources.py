@@ -186,9 +186,7 @@ async def watch(
         with contextlib.suppress(asyncio.CancelledError):
             await listening
     height = console.size.height - 1 if console.is_terminal else _PRINTED_HEIGHT
-    console.print(
-        render(picture, now_unix_s=now(), width=console.width, height=height), soft_wrap=True
-    )
+    console.print(_frame(picture, console, now(), height), soft_wrap=True)
     return picture
 
 
@@ -203,6 +201,13 @@ def _screen(console: Console) -> Live:
     return Live(console=console, screen=True, auto_refresh=False)
 
 
-def _frame(picture: Picture, console: Console, now_unix_s: float) -> RenderableType:
-    width, height = console.size
-    return render(picture, now_unix_s=now_unix_s, width=width, height=height)
+def _frame(
+    picture: Picture, console: Console, now_unix_s: float, height: int | None = None
+) -> RenderableType:
+    return render(
+        picture,
+        now_unix_s=now_unix_s,
+        width=console.width,
+        height=console.size.height if height is None else height,
+        encoding=console.encoding,
+    )

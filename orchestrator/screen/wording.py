@@ -14,18 +14,26 @@ def plain(text: str) -> str:
 
 def clock(unix_s: float, *, seconds: bool = False) -> str:
     """Local wall time, such as ``03:42``; ``--:--`` where it is not known."""
-    pattern = "%H:%M:%S" if seconds else "%H:%M"
+    return _local(unix_s, "%H:%M:%S" if seconds else "%H:%M", "--:--")
+
+
+def day(unix_s: float) -> str:
+    """Local date, such as ``2030-03-17``."""
+    return _local(unix_s, "%Y-%m-%d", "----------")
+
+
+def _local(unix_s: float, pattern: str, otherwise: str) -> str:
     try:
         return datetime.fromtimestamp(unix_s).strftime(pattern)
     except (ValueError, OverflowError, OSError):
-        return "--:--:--" if seconds else "--:--"
+        return otherwise
 
 
 def number_text(value: float, decimals: int, unit: str) -> str:
     """A value with fixed decimals, so that it does not jump about; a dash where there is none."""
     if not math.isfinite(value):
         return f"- {unit}"
-    return f"{value:.{decimals}f} {unit}"
+    return f"{round(value, decimals) + 0.0:.{decimals}f} {unit}"  # + 0.0: no minus before nought
 
 
 def ohm_text(ohm: float) -> str:
