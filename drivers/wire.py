@@ -25,6 +25,7 @@ REPLY_MAX = 1 << 20
 _SLICE_S = 0.05
 _CHUNK = 20 * 1024
 _STATUS = constants.StatusCode
+_TIMEOUT = constants.ResourceAttribute.timeout_value
 _LOST = {
     _STATUS.error_connection_lost,
     _STATUS.error_invalid_object,
@@ -172,12 +173,13 @@ class VisaWire:
         self._quiet = resource.ignore_warning(_STATUS.success_max_count_read)
         self._quiet.__enter__()
         self._end = settings.read_end
+        self._timeout_ms = resource.timeout
         kind = resource.resource_class
         self._stream = kind == "SOCKET" or resource.interface_type == constants.InterfaceType.asrl
 
     def stale(self) -> bool:
-        """VISA cannot tell."""
-        return False
+        """On a byte stream, whether a read that does not wait finds anything."""
+        return self._stream and self._finds(constants.VI_TMO_IMMEDIATE)
 
     def send(self, data: bytes) -> None:
         """Write all bytes. Raises WireTimeout, WireClosed."""
@@ -215,20 +217,20 @@ class VisaWire:
         return WireClosed(f"the session broke ({error})")
 
     def settled(self) -> bool:
-        """On a byte stream, nothing more for 50 ms; else the interface keeps messages apart."""
-        if not self._stream:
-            return True
-        timeout_ms = self._resource.timeout
-        self._resource.timeout = 50
+        """On a byte stream, nothing more for 20 ms; else the interface keeps messages apart."""
+        return not self._stream or not self._finds(20)
+
+    def _finds(self, wait_ms: int) -> bool:
+        """Whether a read within the time gives anything but a timeout."""
+        library, session = self._library, self._session
+        library.set_attribute(session, _TIMEOUT, wait_ms)
         try:
-            self.receive()
-        except WireTimeout:
-            return True
-        except (WireStray, WireClosed):
-            return False
+            _, status = library.read(session, 1)
+        except (OSError, VisaIOError) as error:
+            return getattr(error, "error_code", None) != _STATUS.error_timeout
         finally:
-            self._resource.timeout = timeout_ms
-        return False
+            library.set_attribute(session, _TIMEOUT, self._timeout_ms)
+        return bool(status != _STATUS.error_timeout)
 
     def close(self) -> None:
         """Close the session; never raises."""

@@ -47,7 +47,7 @@ class Unruly:
 
 @pytest.mark.parametrize(
     ("inline", "pyvisa_py", "count"),
-    [(True, True, 1500), (False, True, 1500), (False, False, 250)],
+    [(True, True, 1000), (False, True, 1000), (False, False, 100)],
     ids=["inline", "thread", "any library"],
 )
 def test_no_reply_is_taken_for_that_of_another_query(

@@ -18,13 +18,17 @@ def any_library(request: pytest.FixtureRequest, monkeypatch: pytest.MonkeyPatch)
         monkeypatch.setattr(wire, "_socket_of", lambda resource: None)
 
 
-wires = pytest.mark.parametrize("any_library", ["pyvisa-py", "any"], indirect=True)
+wires = pytest.mark.parametrize(
+    ("inline", "any_library"),
+    [(True, "pyvisa-py"), (False, "pyvisa-py"), (False, "any")],
+    ids=["inline", "thread", "any library"],
+    indirect=["any_library"],
+)
 
 
 # -- late, lost, cut, doubled, garbled ---------------------------------------------------------
 
 
-@modes
 @wires
 def test_late_reply_is_never_given_to_the_next_query(inline: bool, any_library: None) -> None:
     async def body() -> None:
@@ -41,7 +45,6 @@ def test_late_reply_is_never_given_to_the_next_query(inline: bool, any_library: 
     run(body)
 
 
-@modes
 @wires
 def test_reply_that_the_instrument_gives_later_on_a_new_connection_is_refused(
     inline: bool, any_library: None
@@ -57,7 +60,6 @@ def test_reply_that_the_instrument_gives_later_on_a_new_connection_is_refused(
     run(body)
 
 
-@modes
 @wires
 def test_lost_reply_is_asked_for_again_and_counted(inline: bool, any_library: None) -> None:
     async def body() -> None:
@@ -105,7 +107,6 @@ def test_reply_without_its_end_is_a_timeout_that_shows_what_came(inline: bool) -
     run(body)
 
 
-@modes
 @wires
 def test_reply_in_pieces_is_put_together(inline: bool, any_library: None) -> None:
     async def body() -> None:
@@ -131,7 +132,6 @@ def test_doubled_reply_is_refused_and_asked_for_again(inline: bool) -> None:
     run(body)
 
 
-@modes
 @wires
 def test_copy_of_a_reply_that_follows_later_is_not_the_next_reply(
     inline: bool, any_library: None
@@ -148,7 +148,6 @@ def test_copy_of_a_reply_that_follows_later_is_not_the_next_reply(
     run(body)
 
 
-@modes
 @wires
 def test_reply_outside_ascii_is_a_bad_reply(inline: bool, any_library: None) -> None:
     async def body() -> None:
