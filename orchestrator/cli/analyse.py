@@ -83,12 +83,13 @@ def _row(orbit: dict[str, Any]) -> dict[str, Any]:
 
 
 def _show(found: dict[str, Any]) -> None:
+    from rich.box import SIMPLE
     from rich.console import Console
     from rich.table import Table
 
     from orchestrator.report.summary import with_uncertainty
 
-    table = Table()
+    table = Table(box=SIMPLE)
     for heading in ("frequency / T", "mass / m_e", "Dingle temperature / K"):
         table.add_column(heading, justify="right")
     with_density = any("density_m2" in orbit for orbit in found["orbits"])

@@ -42,20 +42,21 @@ def _as_json(expected: "Forecast", warnings: list[str]) -> dict[str, Any]:
 
 
 def _show(name: str, expected: "Forecast", warnings: list[str]) -> None:
+    from rich.box import SIMPLE
     from rich.console import Console
     from rich.table import Table
 
     from orchestrator.units import duration_text
 
     console = Console()
-    table = Table(title=f"Forecast of {name}", title_justify="left")
-    table.add_column("step")
-    for heading in ("starts after", "takes", "samples", "per period"):
-        table.add_column(heading, justify="right")
-    table.add_column("what limits the rate, by time")
+    table = Table(title=f"Forecast of {name}", title_justify="left", box=SIMPLE)
+    table.add_column("step", no_wrap=True)
+    for heading in ("starts at", "takes", "samples", "a period"):
+        table.add_column(heading, justify="right", no_wrap=True)
+    table.add_column("limited by")
     for step in expected.steps:
         shares = sorted(step.binding.items(), key=lambda item: -item[1])
-        binding = ", ".join(f"{who} {100 * share:.0f} %" for who, share in shares if share > 0.005)
+        binding = "\n".join(f"{who} {100 * share:.0f} %" for who, share in shares if share > 0.005)
         least = step.samples_per_period_min
         table.add_row(
             step.name,

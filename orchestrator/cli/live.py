@@ -99,22 +99,25 @@ async def _prove_pace(bench: Bench, pace: float) -> None:
 
 @contextmanager
 def _parking_on_interrupt(asked: threading.Event, say: Callable[[str], None]) -> Iterator[None]:
-    """Let the first Ctrl-C ask the night to park, and the second do what it always does."""
+    """Let the first Ctrl-C, or a request to end, ask the night to park; the second does as ever."""
     if threading.current_thread() is not threading.main_thread():
         yield
         return
-    usual = signal.getsignal(signal.SIGINT)
+    signals = (signal.SIGINT, signal.SIGTERM)
+    usual = {number: signal.getsignal(number) for number in signals}
 
     def ask(number: int, frame: FrameType | None) -> None:
         asked.set()
-        signal.signal(signal.SIGINT, usual)
+        signal.signal(number, usual[signal.Signals(number)])
         say("parking; once more to stop at once and leave the magnet as it is")
 
-    signal.signal(signal.SIGINT, ask)
+    for number in signals:
+        signal.signal(number, ask)
     try:
         yield
     finally:
-        signal.signal(signal.SIGINT, usual)
+        for number in signals:
+            signal.signal(number, usual[number])
 
 
 def rehearse_at_pace(

@@ -4,6 +4,7 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
+from rich.box import SIMPLE
 from rich.console import Group, RenderableType
 from rich.table import Table
 from rich.text import Text
@@ -69,26 +70,21 @@ def summarise(
 
 def closing_table(summary: Summary) -> RenderableType:
     """The table at the end of a night: what was found, and in a rehearsal the truth beside it."""
-    table = Table(title=_title(summary), title_justify="left", expand=False)
-    table.add_column("orbit")
-    for heading in ("F / T", "mass / m_e", "T_D / K"):
-        table.add_column(heading, justify="right")
-        if summary.truth is not None:
-            table.add_column("truth", justify="right", style="dim")
+    table = Table(title=_title(summary), title_justify="left", box=SIMPLE)
+    for heading in ("orbit", "F / T", "mass / m_e", "T_D / K"):
+        table.add_column(heading, justify="right", no_wrap=True)
     for number, found in enumerate(summary.findings, 1):
-        true = _nearest(found, summary.truth)
-        row = [str(number)]
-        for key, spread in (
+        pairs = (
             ("frequency_t", "frequency_sd_t"),
             ("mass", "mass_sd"),
             ("dingle_k", "dingle_sd_k"),
-        ):
-            row.append(with_uncertainty(found[key], found[spread]))
-            if summary.truth is not None:
-                row.append("" if true is None else f"{true[key]:g}")
-        table.add_row(*row)
+        )
+        values = [with_uncertainty(found[key], found[spread]) for key, spread in pairs]
+        table.add_row(str(number), *values)
+        if true := _nearest(found, summary.truth):
+            table.add_row("truth", *(f"{true[key]:g}" for key, _ in pairs), style="dim")
     if not summary.findings:
-        table.add_row("none found", *[""] * (len(table.columns) - 1))
+        table.add_row("none", "-", "-", "-")
     lines = [
         "F: frequency, T_D: Dingle temperature; uncertainties are one standard deviation",
         f"{summary.readings} readings in {duration_text(summary.simulated_s)} of the night, "
