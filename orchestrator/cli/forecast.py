@@ -51,22 +51,22 @@ def _show(name: str, expected: "Forecast", warnings: list[str]) -> None:
     console = Console()
     table = Table(title=f"Forecast of {name}", title_justify="left", box=SIMPLE)
     table.add_column("step", no_wrap=True)
-    for heading in ("starts at", "takes", "samples", "a period"):
+    for heading in ("starts at", "takes", "per period"):
         table.add_column(heading, justify="right", no_wrap=True)
     table.add_column("limited by")
     for step in expected.steps:
         shares = sorted(step.binding.items(), key=lambda item: -item[1])
-        binding = "\n".join(f"{who} {100 * share:.0f} %" for who, share in shares if share > 0.005)
+        binding = "\n".join(f"{100 * share:.0f} % {who}" for who, share in shares if share > 0.005)
         least = step.samples_per_period_min
         table.add_row(
             step.name,
             duration_text(step.start_s),
             duration_text(step.duration_s),
-            str(step.samples),
             "" if least is None else f"{least:.1f}",
             binding,
         )
     console.print(table)
+    console.print("per period: least number of samples in the shortest period predicted\n")
     console.print(
         f"The night takes {duration_text(expected.duration_s)}. At one constant rate, with the "
         "same samples per period, it would take "
