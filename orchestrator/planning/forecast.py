@@ -1,5 +1,6 @@
 """The forecast: what a night will take and yield, computed without any instrument."""
 
+import math
 from dataclasses import dataclass, field
 
 from orchestrator.config.rig import Rig
@@ -7,7 +8,7 @@ from orchestrator.config.sequence import Sequence
 from orchestrator.planning.belief import Belief
 from orchestrator.planning.ceilings import Ceilings
 from orchestrator.planning.expansion import PlannedSettle, PlannedSweep, expand
-from orchestrator.planning.period import sweep_ceilings, travel_ceilings
+from orchestrator.planning.period import lowest_visible_t, sweep_ceilings, travel_ceilings
 from orchestrator.planning.staircase import Leg, PlanError, duration_s, staircase
 
 SWITCH_MARGIN = 1.5  # the switch is given this many times its warm-up
@@ -102,7 +103,9 @@ class _Count:
             "field-sweep",
             duration_s(legs) + pause_s,
             constant_s=abs(step.to_t - step.from_t) / slowest + pause_s,
-            samples_per_period_min=_least_samples(legs, self.belief, self.rig),
+            samples_per_period_min=_finite(
+                _least_samples(legs, self.belief, self.rig, step.temperature_k)
+            ),
             binding=_shares(legs),
         )
 
@@ -141,6 +144,11 @@ def forecast(
     return Forecast(count.now_s, count.constant_s, tuple(count.steps))
 
 
+def _finite(value: float) -> float | None:
+    """None where no orbit is seen anywhere in a sweep."""
+    return value if math.isfinite(value) else None
+
+
 def _shares(legs: tuple[Leg, ...]) -> dict[str, float]:
     total = duration_s(legs)
     shares: dict[str, float] = {}
@@ -149,11 +157,17 @@ def _shares(legs: tuple[Leg, ...]) -> dict[str, float]:
     return shares
 
 
-def _least_samples(legs: tuple[Leg, ...], belief: Belief, rig: Rig) -> float:
-    """Least number of samples in a period B^2/F of the highest frequency, over the legs."""
-    frequency = max(one.frequency_t for one in belief.orbits)
+def _least_samples(
+    legs: tuple[Leg, ...], belief: Belief, rig: Rig, temperature_k: float | None
+) -> float:
+    """Least number of samples in a period B^2/F over the legs, of every orbit where it is seen."""
     interval_s = rig.sampling.interval_s
-    return min(
-        min(abs(leg.from_t), abs(leg.to_t)) ** 2 / (frequency * leg.rate_t_per_s * interval_s)
-        for leg in legs
-    )
+    least = math.inf
+    for orbit in belief.orbits:
+        seen_from_t = lowest_visible_t(orbit, temperature_k)
+        for leg in legs:
+            low, high = sorted((abs(leg.from_t), abs(leg.to_t)))
+            if high > seen_from_t:
+                period_t = max(low, seen_from_t) ** 2 / orbit.frequency_t
+                least = min(least, period_t / (leg.rate_t_per_s * interval_s))
+    return least
