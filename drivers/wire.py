@@ -265,7 +265,9 @@ def open_wire(
     try:
         resource: Any = manager.open_resource(address, open_timeout=timeout_ms)
     except Exception as error:  # pyvisa-py raises bare Exception where it cannot connect
-        raise WireRefused(f"could not be opened ({error})") from None
+        within = f"no connection within {settings.timeout_s:g} s"
+        reason = str(error).replace(str(int(_STATUS.error_timeout)), within)
+        raise WireRefused(f"could not be opened ({reason})") from None
     try:
         return _prepared(resource, settings, timeout_ms, given_up)
     except WireRefused:

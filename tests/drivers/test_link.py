@@ -1,7 +1,9 @@
 """Links: opening, writes, closed peers, many at a time, cancelled and hung calls, bookkeeping."""
 
 import asyncio
+import contextlib
 import socket
+import sys
 import threading
 import time
 
@@ -49,6 +51,31 @@ def test_refused_port_is_told_at_once_with_its_reason(inline: bool) -> None:
                 visa_manager(), f"TCPIP::127.0.0.1::{port}::SOCKET", name="magnet", inline=inline
             )
         assert time.monotonic() - start_s < 1.0
+
+    run(body)
+
+
+@pytest.mark.skipif(sys.platform != "linux", reason="fills a listener's queue as Linux counts it")
+def test_host_that_does_not_take_the_connection_is_unreachable_in_time() -> None:
+    async def body() -> None:
+        with socket.socket() as listener, contextlib.ExitStack() as crowd:
+            listener.bind(("127.0.0.1", 0))
+            listener.listen(0)
+            port = listener.getsockname()[1]
+            for _ in range(4):
+                other = crowd.enter_context(socket.socket())
+                other.setblocking(False)
+                other.connect_ex(("127.0.0.1", port))
+            start_s = time.monotonic()
+            with pytest.raises(Unreachable, match=r"no connection within 0\.3 s"):
+                await open_link(
+                    visa_manager(),
+                    f"TCPIP::127.0.0.1::{port}::SOCKET",
+                    name="magnet",
+                    inline=False,
+                    timeout_s=0.3,
+                )
+            assert time.monotonic() - start_s < 2.0
 
     run(body)
 

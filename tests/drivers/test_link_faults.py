@@ -7,7 +7,7 @@ import pytest
 
 from drivers import wire
 from drivers.link import BadReply, Closed, Timeout
-from tests.drivers.fake_instrument import Answer, FakeInstrument, plain
+from tests.drivers.fake_instrument import IDENTITY, Answer, FakeInstrument, plain
 from tests.drivers.links import modes, once, opened, run
 
 
@@ -127,6 +127,23 @@ def test_doubled_reply_is_refused_and_asked_for_again(inline: bool) -> None:
             assert await link.query("N1?") == "1"
             assert fake.said("N1?") == 2
             assert await link.query("N2?") == "2"
+            await link.close()
+
+    run(body)
+
+
+@wires
+def test_copy_of_the_identity_after_reopening_is_waited_for(
+    inline: bool, any_library: None
+) -> None:
+    async def body() -> None:
+        with FakeInstrument() as fake:
+            link = await opened(fake, inline)
+            fake.behaviour = once("*IDN?", Answer(2 * (IDENTITY.encode() + b"\n",)))
+            link._session.distrust()
+            assert await link.query("N1?") == "1"
+            assert fake.said("N1?") == 1
+            assert link.counters.opened == 3
             await link.close()
 
     run(body)
