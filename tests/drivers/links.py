@@ -18,7 +18,7 @@ def run(body: Callable[[], Coroutine[Any, Any, None]]) -> None:
 
 
 async def opened(fake: FakeInstrument, inline: bool, **changes: Any) -> Link:
-    settings: dict[str, Any] = {"timeout_s": 0.06, "retries": 2, "retry_pause_s": 0.0, **changes}
+    settings: dict[str, Any] = {"timeout_s": 0.1, "retries": 2, "retry_pause_s": 0.0, **changes}
     return await open_link(visa_manager(), fake.address, name="fake", inline=inline, **settings)
 
 

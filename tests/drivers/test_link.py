@@ -95,7 +95,7 @@ def test_silence_at_opening_is_a_timeout(inline: bool) -> None:
     async def body() -> None:
         with (
             FakeInstrument(lambda message: Answer()) as fake,
-            pytest.raises(Timeout, match=r"no reply within 0\.06 s"),
+            pytest.raises(Timeout, match=r"no reply within 0\.1 s"),
         ):
             await opened(fake, inline)
 

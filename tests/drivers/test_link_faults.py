@@ -32,12 +32,12 @@ wires = pytest.mark.parametrize(
 @wires
 def test_late_reply_is_never_given_to_the_next_query(inline: bool, any_library: None) -> None:
     async def body() -> None:
-        late = once("N1?", Answer((b"1\n",), delay_s=0.09))
+        late = once("N1?", Answer((b"1\n",), delay_s=0.15))
         with FakeInstrument(late) as fake:
             link = await opened(fake, inline, retries=0)
             with pytest.raises(Timeout):
                 await link.query("N1?")
-            await asyncio.sleep(0.06)
+            await asyncio.sleep(0.1)
             assert await link.query("N2?") == "2"
             assert link.counters.opened == fake.connections == 2
             await link.close()
