@@ -86,7 +86,7 @@ class Listening:
     def of_kind(self, kind: str) -> list[Message]:
         return [message for message in self.messages if message.kind == kind]
 
-    async def until(self, done: Callable[[], bool], timeout_s: float = 12.0) -> None:
+    async def until(self, done: Callable[[], bool], timeout_s: float = 60.0) -> None:
         await until(done, timeout_s)
         assert not self._task.done()
 
@@ -96,7 +96,7 @@ class Listening:
             await self._task
 
 
-async def until(done: Callable[[], bool], timeout_s: float = 12.0) -> None:
+async def until(done: Callable[[], bool], timeout_s: float = 60.0) -> None:
     """Wait for something to become true, and fail if it does not."""
     end_s = time.monotonic() + timeout_s
     while not done():
