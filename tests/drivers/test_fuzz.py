@@ -11,7 +11,7 @@ from drivers.link import LinkError, open_link
 from drivers.opening import visa_manager
 from tests.drivers.fake_instrument import Answer, FakeInstrument, plain
 
-TIMEOUT_S = 0.015
+TIMEOUT_S = 0.012
 FAULTS = {
     "late": lambda reply: Answer((reply,), delay_s=TIMEOUT_S * 1.2),
     "much later": lambda reply: Answer(held=reply),
@@ -47,7 +47,7 @@ class Unruly:
 
 @pytest.mark.parametrize(
     ("inline", "pyvisa_py", "count"),
-    [(True, True, 1000), (False, True, 1000), (False, False, 100)],
+    [(True, True, 1000), (False, True, 1000), (False, False, 60)],
     ids=["inline", "thread", "any library"],
 )
 def test_no_reply_is_taken_for_that_of_another_query(
@@ -57,7 +57,7 @@ def test_no_reply_is_taken_for_that_of_another_query(
         monkeypatch.setattr(wire, "_socket_of", lambda resource: None)
 
     async def body() -> None:
-        unruly = Unruly(seed=11 + inline, share=0.06)
+        unruly = Unruly(seed=11 + inline, share=0.05)
         with FakeInstrument(unruly) as fake:
             unruly.share, share = 0.0, unruly.share
             link = await open_link(
@@ -81,7 +81,7 @@ def test_no_reply_is_taken_for_that_of_another_query(
             assert len(unruly.done) == len(FAULTS) or count < 1000
             assert given_up < count / 10
             assert link.counters.exchanges == count - given_up
-            assert link.counters.retries > count / 50
+            assert link.counters.retries > count / 60
             unruly.share = 0.0
             assert await link.ask("N7?", int) == 7
             await link.close()
@@ -106,7 +106,7 @@ def test_writes_among_faults_arrive_at_most_once() -> None:
             certain: list[str] = []
             may_have: list[str] = []
             never: list[str] = []
-            for number in range(400):
+            for number in range(250):
                 message = f"SET {number};N{number}?"
                 try:
                     await link.ask(message, str, repeat=False)
@@ -136,7 +136,7 @@ def test_cancelling_at_random_moments_leaves_no_reply_behind() -> None:
                 visa_manager(), fake.address, name="fake", inline=False, timeout_s=1.0
             )
             cancelled = 0
-            for number in range(300):
+            for number in range(200):
                 task = asyncio.create_task(link.query(f"N{number}?"))
                 if dice.random() < 0.3:
                     await asyncio.sleep(dice.random() * 0.004)
@@ -145,7 +145,7 @@ def test_cancelling_at_random_moments_leaves_no_reply_behind() -> None:
                     assert await task == str(number)
                 except asyncio.CancelledError:
                     cancelled += 1
-            assert 20 < cancelled < 200
+            assert 15 < cancelled < 150
             assert link.counters.errors == 0
             await link.close()
 
