@@ -148,7 +148,7 @@ def test_one_look_at_a_running_night_does_not_wait_for_its_end(tmp_path: Path) -
         await watch_until_end(from_folder(tmp_path), console, once=True)
 
     run(scene)
-    assert time.monotonic() - begun_s < 5.0
+    assert time.monotonic() - begun_s < 60.0
     assert "sweep-1: sweep from 3 to 12 T at 1.5 K" in file.getvalue()
     writing.ledger.close()
 
