@@ -8,13 +8,15 @@ from typing import Any
 import pyvisa
 
 from drivers.capabilities import Gauge, LockIn, MagnetSupply, TemperatureController
-from drivers.dialect import load_dialect
+from drivers.dialect import Dialect, load_dialect, shipped_dialects
+from drivers.kinds import Kind
 from drivers.opening import (
     open_gauge,
     open_lock_in,
     open_magnet_supply,
     open_temperature_controller,
 )
+from orchestrator.config.document import ConfigError, Document, key_text
 from orchestrator.config.rig import Rig, Spoken
 from orchestrator.readings import Channel
 
@@ -104,39 +106,87 @@ class Bench:
         await asyncio.gather(*(driver.close() for driver in drivers), return_exceptions=True)
 
 
+def load_dialects(rig: Rig, document: Document) -> dict[str, Dialect]:
+    """The dialect of every instrument, by the instrument's name.
+
+    A dialect is one that is shipped, by its name, or a file of the laboratory's own: a path that
+    ends in ``.toml``, from the rig file's folder.
+
+    Raises
+    ------
+    ConfigError
+        The rig file names a dialect that does not exist, or is of another kind of instrument.
+    DialectError
+        A dialect file is wrong.
+    """
+    wanted: list[tuple[str, Kind, tuple[str | int, ...], Spoken]] = [
+        ("magnet", "magnet", ("magnet",), rig.magnet),
+        ("stage", "temperature", ("stage",), rig.stage),
+    ]
+    for index, lock_in in enumerate(rig.lock_ins):
+        wanted.append((lock_in.name, "lockin", ("lockin", index), lock_in))
+    for index, gauge in enumerate(rig.gauges):
+        wanted.append((gauge.name, "gauge", ("gauge", index), gauge))
+    dialects: dict[str, Dialect] = {}
+    for name, kind, place, spoken in wanted:
+        own = Path(document.path).parent / spoken.dialect
+        is_own = spoken.dialect.endswith(".toml")
+        problem = ""
+        if not is_own and spoken.dialect not in shipped_dialects():
+            problem = "is not a shipped dialect"
+        elif is_own and not own.is_file():
+            problem = f"there is no file {own}"
+        else:
+            dialects[name] = load_dialect(own if is_own else spoken.dialect)
+            if dialects[name].kind != kind:
+                problem = f"is the dialect of a {dialects[name].kind}"
+        if problem:
+            key = (*place, "dialect")
+            raise ConfigError(
+                document.path,
+                problem,
+                line=document.line_of(key),
+                key=key_text(key),
+                value=f'"{spoken.dialect}"',
+                allowed=f"a {kind} dialect: {', '.join(_shipped_of(kind))}, or a .toml file",
+            )
+    return dialects
+
+
+def _shipped_of(kind: Kind) -> list[str]:
+    return [name for name in shipped_dialects() if load_dialect(name).kind == kind]
+
+
 async def open_bench(
-    rig: Rig, manager: pyvisa.ResourceManager, *, inline: bool, dialects: Path = Path()
+    rig: Rig, document: Document, manager: pyvisa.ResourceManager, *, inline: bool
 ) -> Bench:
     """Open every instrument of a rig and prove who is there.
 
     Parameters
     ----------
-    rig : Rig
-        Addresses and dialects.
+    rig, document : Rig, Document
+        Addresses and dialects, and where they stand.
     manager : pyvisa.ResourceManager
         Of a VISA library, or of the simulated rig.
     inline : bool
         Exchanges run in the event loop itself, for a clock that jumps; otherwise in a thread of
         each link's own.
-    dialects : Path
-        Folder to which the paths of a laboratory's own dialect files are relative.
 
     Raises
     ------
     LinkError
         An instrument does not answer, or is another one; nothing stays open.
-    DialectError
-        A dialect does not exist or is wrong.
+    ConfigError, DialectError
+        See `load_dialects`.
     """
+    dialects = load_dialects(rig, document)
     opened: list[Any] = []
 
     def link(name: str, spoken: Spoken) -> dict[str, Any]:
-        dialect = spoken.dialect
-        own = dialect.endswith(".toml")
         return {
             "manager": manager,
             "address": spoken.address,
-            "dialect": load_dialect(dialects / dialect if own else dialect),
+            "dialect": dialects[name],
             "name": name,
             "inline": inline,
         }

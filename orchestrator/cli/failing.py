@@ -18,6 +18,7 @@ class Failed(Exception):
 @contextmanager
 def input_errors() -> Iterator[None]:
     """Turn errors in what a person gave into one message and exit code 2."""
+    from drivers.dialect import DialectError
     from drivers.link import LinkError
     from orchestrator.analysis.sweeps import AnalysisError
     from orchestrator.config.document import ConfigError
@@ -31,6 +32,7 @@ def input_errors() -> Iterator[None]:
         AddressError,
         AnalysisError,
         ConfigError,
+        DialectError,
         LedgerError,
         LinkError,
         PlanError,

@@ -61,7 +61,7 @@ def at_full_speed(
         addresses = addresses_of(files.rig)
         attached = meddle(world, panels(world))
         manager = attach({addresses[name]: panel for name, panel in attached.items()})
-        bench = await open_bench(files.rig, manager, inline=True)
+        bench = await open_bench(files.rig, files.rig_document, manager, inline=True)
         setting = Setting(
             folder=folder,
             description=description,

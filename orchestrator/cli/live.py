@@ -47,7 +47,7 @@ def live_night(
     asked = threading.Event()
 
     async def night(progress: NightProgress) -> tuple[Path, NightDone]:
-        bench = await open_bench(files.rig, visa_manager(), inline=False)
+        bench = await open_bench(files.rig, files.rig_document, visa_manager(), inline=False)
         try:
             await _prove_pace(bench, pace)
             folder = new_folder(into, files.sequence.about.name)
