@@ -97,6 +97,8 @@ def analyse_ladder(
 ) -> list[OrbitFinding]:
     """Find and fit all orbits, from low to high frequency; see `find_orbits` and `fit_ladder`.
 
+    What the fit says grows towards low field, by more than four standard deviations, is left out.
+
     Raises
     ------
     AnalysisError
@@ -105,7 +107,18 @@ def analyse_ladder(
     fitted = search.search(stack(sweeps), count_max=count_max, known=known)
     if fitted is None:
         return []
-    return sorted(orbit_findings(fitted), key=lambda f: f.frequency_t)
+    found = sorted(orbit_findings(fitted), key=lambda f: f.frequency_t)
+    return [one for one in found if not _grows_towards_low_field(one)]
+
+
+def _grows_towards_low_field(finding: OrbitFinding) -> bool:
+    """Whether a Dingle temperature lies clearly below zero.
+
+    No orbit does that; a rest of the background or an alias of the sampling may.
+    """
+    if finding.dingle_k is None or finding.dingle_sd_k is None:
+        return False
+    return finding.dingle_k < -4 * finding.dingle_sd_k
 
 
 def analyse_directions(

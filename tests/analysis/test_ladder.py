@@ -52,6 +52,14 @@ def test_two_orbits_are_found_blind_and_fitted_within_their_errors() -> None:
         assert finding.mass_sd < 0.01 * truth.mass
 
 
+def test_what_grows_towards_low_field_is_no_orbit() -> None:
+    """A negative Dingle temperature: a rest of something else, not an oscillation of the sample."""
+    growing = replace(HEAVY, amplitude_ohm=0.02, frequency_t=700.0, dingle_k=-0.6)
+    sweeps = simulated_ladder(4, FIELD, (0.4, 2.0, 4.0), (LIGHT, growing))
+    assert 700 in [round(one) for one in find_orbits(sweeps)]
+    assert [round(one.frequency_t) for one in analyse_ladder(sweeps)] == [410]
+
+
 def test_weak_orbit_beside_a_strong_one_is_found() -> None:
     """A twentieth of the amplitude, hidden under the strong one's side lobes at first."""
     weak = replace(HEAVY, amplitude_ohm=0.05, frequency_t=475.0)
