@@ -16,7 +16,7 @@ from drivers.opening import (
     open_magnet_supply,
     open_temperature_controller,
 )
-from orchestrator.config.document import ConfigError, Document, key_text
+from orchestrator.config.document import Document
 from orchestrator.config.rig import Rig, Spoken
 from orchestrator.readings import Channel
 
@@ -141,12 +141,9 @@ def load_dialects(rig: Rig, document: Document) -> dict[str, Dialect]:
             if dialects[name].kind != kind:
                 problem = f"is the dialect of a {dialects[name].kind}"
         if problem:
-            key = (*place, "dialect")
-            raise ConfigError(
-                document.path,
+            raise document.refuse(
+                (*place, "dialect"),
                 problem,
-                line=document.line_of(key),
-                key=key_text(key),
                 value=f'"{spoken.dialect}"',
                 allowed=f"a {kind} dialect: {', '.join(_shipped_of(kind))}, or a .toml file",
             )

@@ -5,7 +5,7 @@ from importlib import resources
 from pathlib import Path
 from typing import Any
 
-from orchestrator.config.document import ConfigError, Document
+from orchestrator.config.document import Document
 from orchestrator.config.rig import Rig, load_rig
 from orchestrator.config.sequence import Sequence, load_sequence
 from orchestrator.config.world import WorldFile, load_world
@@ -59,12 +59,9 @@ def load_simulated(world: Path | None, rig: Rig) -> Simulated:
     names = {one.name for one in rig.lock_ins}
     for index, lock_in in enumerate(model.lock_ins):
         if lock_in.name not in names:
-            key = ("lockin", index, "name")
-            raise ConfigError(
-                document.path,
+            raise document.refuse(
+                ("lockin", index, "name"),
                 "is not a lock-in of the rig",
-                line=document.line_of(key),
-                key=f"lockin[{index + 1}].name",
                 value=f'"{lock_in.name}"',
                 allowed=", ".join(sorted(names)),
             )

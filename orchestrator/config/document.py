@@ -69,6 +69,19 @@ class Document:
         place = self.path if line is None else f"{self.path}, line {line}"
         return f"{place} ({key_text(key)})"
 
+    def refuse(
+        self, key: Key, problem: str, *, value: str | None = None, allowed: str | None = None
+    ) -> ConfigError:
+        """The error that says what is wrong at a key of this file; the caller raises it."""
+        return ConfigError(
+            self.path,
+            problem,
+            line=self.line_of(key),
+            key=key_text(key),
+            value=value,
+            allowed=allowed,
+        )
+
 
 def key_text(key: Key) -> str:
     """``("step", 0, "to")`` as a person counts: ``step[1].to``."""

@@ -4,7 +4,7 @@ from typing import Any, TypeVar
 
 from pydantic import ValidationError
 
-from orchestrator.config.document import ConfigError, Document, Key, key_text
+from orchestrator.config.document import ConfigError, Document, Key
 from orchestrator.config.quantity import Strict
 
 Model = TypeVar("Model", bound=Strict)
@@ -36,14 +36,7 @@ def _config_error(document: Document, item: Any) -> ConfigError:
     problem = _WORDS.get(item["type"], item["msg"])
     given = None if item["type"] == "missing" else _shown(item["input"])
     allowed = context.get("allowed") or context.get("expected")
-    return ConfigError(
-        document.path,
-        problem,
-        line=document.line_of(key),
-        key=key_text(key),
-        value=given,
-        allowed=allowed,
-    )
+    return document.refuse(key, problem, value=given, allowed=allowed)
 
 
 def _without_tags(key: Key, data: Any) -> Key:

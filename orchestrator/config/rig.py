@@ -8,7 +8,7 @@ from typing import Annotated, Literal
 
 from pydantic import Field
 
-from orchestrator.config.document import ConfigError, Document, key_text, read_document
+from orchestrator.config.document import Document, read_document
 from orchestrator.config.loading import build
 from orchestrator.config.quantity import Quantity, Strict
 
@@ -142,73 +142,46 @@ def load_rig(path: str | Path) -> tuple[Rig, Document]:
     document = read_document(path)
     rig = build(Rig, document)
     _check_ramp_ceiling(rig.magnet, document)
-    _check_stage(rig.stage, document)
-    _check_sampling(rig.sampling, document)
+    _check_order(rig, document)
     _check_names(rig, document)
     return rig, document
-
-
-def _refuse(
-    document: Document, key: tuple[str | int, ...], value: str, problem: str, allowed: str
-) -> ConfigError:
-    return ConfigError(
-        document.path,
-        problem,
-        line=document.line_of(key),
-        key=key_text(key),
-        value=value,
-        allowed=allowed,
-    )
 
 
 def _check_ramp_ceiling(magnet: Magnet, document: Document) -> None:
     least = 0.0
     for index, zone in enumerate(magnet.ramp_ceiling):
+        key = ("magnet", "ramp_ceiling", index, "to")
         if zone.to_t <= least:
-            key = ("magnet", "ramp_ceiling", index, "to")
-            raise _refuse(
-                document, key, f"{zone.to_t:g} T", "zones must rise", f"above {least:g} T"
+            raise document.refuse(
+                key, "zones must rise", value=f"{zone.to_t:g} T", allowed=f"above {least:g} T"
             )
         least = zone.to_t
     if least < magnet.field_max_t:
-        key = ("magnet", "ramp_ceiling", len(magnet.ramp_ceiling) - 1, "to")
-        raise _refuse(
-            document,
+        raise document.refuse(
             key,
-            f"{least:g} T",
             "the last zone must reach field_max",
-            f"{magnet.field_max_t:g} T or more",
+            value=f"{least:g} T",
+            allowed=f"{magnet.field_max_t:g} T or more",
         )
 
 
-def _check_stage(stage: Stage, document: Document) -> None:
-    if stage.temperature_max_k <= stage.temperature_min_k:
-        raise _refuse(
-            document,
-            ("stage", "temperature_max"),
-            f"{stage.temperature_max_k:g} K",
-            "must lie above temperature_min",
-            f"above {stage.temperature_min_k:g} K",
-        )
-    if stage.temperature_trip_k <= stage.temperature_max_k:
-        raise _refuse(
-            document,
-            ("stage", "temperature_trip"),
-            f"{stage.temperature_trip_k:g} K",
-            "must lie above temperature_max",
-            f"above {stage.temperature_max_k:g} K",
-        )
-
-
-def _check_sampling(sampling: Sampling, document: Document) -> None:
-    if sampling.stale_after_s <= sampling.interval_s:
-        raise _refuse(
-            document,
-            ("sampling", "stale_after"),
-            f"{sampling.stale_after_s:g} s",
-            "must be longer than the sampling interval",
-            f"above {sampling.interval_s:g} s",
-        )
+def _check_order(rig: Rig, document: Document) -> None:
+    """Values of which one must lie above another."""
+    stage, sampling = rig.stage, rig.sampling
+    low, high, trip = stage.temperature_min_k, stage.temperature_max_k, stage.temperature_trip_k
+    pairs = (
+        (("stage", "temperature_max"), high, "temperature_min", low, "K"),
+        (("stage", "temperature_trip"), trip, "temperature_max", high, "K"),
+        (("sampling", "stale_after"), sampling.stale_after_s, "interval", sampling.interval_s, "s"),
+    )
+    for key, value, below, least, unit in pairs:
+        if value <= least:
+            raise document.refuse(
+                key,
+                f"must lie above {below}",
+                value=f"{value:g} {unit}",
+                allowed=f"above {least:g} {unit}",
+            )
 
 
 def _check_names(rig: Rig, document: Document) -> None:
@@ -218,5 +191,5 @@ def _check_names(rig: Rig, document: Document) -> None:
     for key, name in named:
         if name in taken:
             allowed = "a name of its own, not magnet or stage"
-            raise _refuse(document, key, f'"{name}"', "stands twice", allowed)
+            raise document.refuse(key, "stands twice", value=f'"{name}"', allowed=allowed)
         taken.add(name)

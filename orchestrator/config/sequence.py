@@ -6,7 +6,7 @@ from typing import Annotated, Literal
 
 from pydantic import Field
 
-from orchestrator.config.document import ConfigError, Document, Key, key_text, read_document
+from orchestrator.config.document import Document, Key, read_document
 from orchestrator.config.loading import build
 from orchestrator.config.quantity import Quantity, Strict
 from orchestrator.config.rig import Rig
@@ -100,22 +100,18 @@ def load_sequence(path: str | Path, rig: Rig, rig_document: Document) -> tuple[S
     names: set[str] = set()
     for key, step in _with_places(sequence):
         if step.name in names:
-            raise ConfigError(
-                document.path,
+            raise document.refuse(
+                (*key, "name"),
                 "stands twice",
-                line=document.line_of((*key, "name")),
-                key=key_text((*key, "name")),
                 value=f'"{step.name}"',
                 allowed="a name of its own",
             )
         names.add(step.name)
         for place, value, unit, least, most, limit in _limits(key, step, rig):
             if not least <= value <= most:
-                raise ConfigError(
-                    document.path,
+                raise document.refuse(
+                    place,
                     f"lies outside the rig's limit in {rig_document.where(*limit)}",
-                    line=document.line_of(place),
-                    key=key_text(place),
                     value=f"{value:g} {unit}",
                     allowed=f"{least:g} {unit} to {most:g} {unit}",
                 )
