@@ -8,12 +8,14 @@ from pathlib import Path
 
 from orchestrator.bench import Bench, channels_of
 from orchestrator.cli.composition import Files
+from orchestrator.cli.failing import NIGHT_ENDED_EARLY, Failed
 from orchestrator.engine.night import NightDone, run_night
 from orchestrator.engine.sampler import Sampler
 from orchestrator.engine.work import Outlet, Work
 from orchestrator.interlocks.gate import Gate
 from orchestrator.interlocks.sentinel import Sentinel
 from orchestrator.ledger.records import NightDescription
+from orchestrator.ledger.schema import LedgerError
 from orchestrator.ledger.writing import CommitMode, Ledger
 from orchestrator.planning.belief import Belief
 from orchestrator.planning.expansion import expand
@@ -76,51 +78,70 @@ async def do_night(
     files: Files, bench: Bench, setting: Setting, open_outlet: OpenOutlet
 ) -> NightDone:
     """Run a night on an opened bench; the ledger is complete on disk when this returns."""
-    channels = channels_of(files.rig)
     expected = forecast(files.rig, files.sequence)
     ledger = Ledger.create(
         setting.folder,
         description=setting.description,
-        channels=channels,
+        channels=channels_of(files.rig),
         commit=setting.commit,
         clock=setting.clock,
         wall=setting.wall,
     )
-    with ledger:
-        outlet = open_outlet(ledger)
-        try:
-            gate = Gate(bench, files.rig, files.rig_document, ledger, setting.clock)
-            sentinel = Sentinel(files.rig, channels, gate, setting.clock)
-            teller = _Teller(sentinel, gate, outlet, setting, expected.duration_s)
-            sampler = Sampler(
-                bench,
-                channels,
-                ledger,
-                sentinel,
-                interval_s=files.rig.sampling.interval_s,
-                parallel=setting.parallel,
-                clock=setting.clock,
-                wall=setting.wall,
-                on_reading=teller.tell,
-            )
-            work = Work(
-                rig=files.rig,
-                document=files.rig_document,
-                gate=gate,
-                sentinel=sentinel,
-                sampler=sampler,
-                ledger=ledger,
-                outlet=outlet,
-                clock=setting.clock,
-                belief=Belief.from_prior(files.sequence.prior),
-                park_asked=setting.park_asked,
-            )
-            done = await run_night(work, expand(files.sequence, files.rig), expected)
-            teller.end(done)
-            return done
-        finally:
-            ledger.commit()
-            outlet.close()
+    outlet = open_outlet(ledger)
+    try:
+        work, teller = _assemble(files, bench, setting, ledger, outlet, expected.duration_s)
+        done = await run_night(work, expand(files.sequence, files.rig), expected)
+        teller.end(done)
+    except BaseException:
+        outlet.close()
+        ledger.close()
+        raise
+    try:
+        ledger.commit()
+        outlet.close()
+        ledger.close()
+    except LedgerError as error:
+        raise Failed(f"{error}; the rig: {done.parked}", NIGHT_ENDED_EARLY) from error
+    return done
+
+
+def _assemble(
+    files: Files,
+    bench: Bench,
+    setting: Setting,
+    ledger: Ledger,
+    outlet: Outlet,
+    expected_s: float,
+) -> tuple[Work, "_Teller"]:
+    """The parts of a night, each knowing the others that it needs."""
+    channels = channels_of(files.rig)
+    gate = Gate(bench, files.rig, files.rig_document, ledger, setting.clock)
+    sentinel = Sentinel(files.rig, channels, gate, setting.clock)
+    teller = _Teller(sentinel, gate, outlet, setting, expected_s)
+    sampler = Sampler(
+        bench,
+        channels,
+        ledger,
+        sentinel,
+        interval_s=files.rig.sampling.interval_s,
+        parallel=setting.parallel,
+        clock=setting.clock,
+        wall=setting.wall,
+        on_reading=teller.tell,
+    )
+    work = Work(
+        rig=files.rig,
+        document=files.rig_document,
+        gate=gate,
+        sentinel=sentinel,
+        sampler=sampler,
+        ledger=ledger,
+        outlet=outlet,
+        clock=setting.clock,
+        belief=Belief.from_prior(files.sequence.prior),
+        park_asked=setting.park_asked,
+    )
+    return work, teller
 
 
 class _Teller:

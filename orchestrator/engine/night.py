@@ -2,7 +2,8 @@
 
 import asyncio
 import contextlib
-from collections.abc import Sequence
+import traceback
+from collections.abc import AsyncIterator, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -12,6 +13,7 @@ from orchestrator.engine.settling import settle
 from orchestrator.engine.work import Interrupted, Work
 from orchestrator.interlocks.conditions import Response
 from orchestrator.interlocks.gate import Refused, Unanswered
+from orchestrator.ledger.schema import LedgerError
 from orchestrator.planning.expansion import PlannedSettle, PlannedSweep
 from orchestrator.planning.forecast import Forecast
 
@@ -41,21 +43,28 @@ async def run_night(work: Work, steps: Sequence[PlannedStep], forecast: Forecast
     """Do the steps of a night, then park, whatever happened."""
     started_s = work.clock()
     work.event("night", "started", **_about(work, forecast))
-    sampling = asyncio.ensure_future(work.sampler.run())
     done: list[StepDone] = []
-    try:
+    async with _sampling(work):
         outcome = await _do_steps(work, steps, done)
-        parking_s = work.clock()
+    parking_s = work.clock()
+    async with _sampling(work):
         parked = await park(work)
-        done.append(StepDone("park", parked, work.clock() - parking_s))
+    done.append(StepDone("park", parked, work.clock() - parking_s))
+    await work.sampler.close()
+    work.event("night", "ended", outcome, outcome=outcome, parked=parked)
+    return NightDone(outcome, parked, work.clock() - started_s, tuple(done))
+
+
+@contextlib.asynccontextmanager
+async def _sampling(work: Work) -> AsyncIterator[None]:
+    """Readings while inside. A sampler that failed in the steps is started anew for parking."""
+    sampling = asyncio.ensure_future(work.sampler.run())
+    try:
+        yield
     finally:
         sampling.cancel()
-        with contextlib.suppress(asyncio.CancelledError, Exception):
+        with contextlib.suppress(asyncio.CancelledError):
             await sampling
-        await work.sampler.close()
-    work.event("night", "ended", outcome, outcome=outcome, parked=parked)
-    work.ledger.commit()
-    return NightDone(outcome, parked, work.clock() - started_s, tuple(done))
 
 
 async def _do_steps(work: Work, steps: Sequence[PlannedStep], done: list[StepDone]) -> str:
@@ -81,6 +90,15 @@ async def _do_steps(work: Work, steps: Sequence[PlannedStep], done: list[StepDon
         # The plan asked for what the gate does not allow: a fault of this program, not of the rig.
         work.gate.latch("refused-command", Response.PARK, str(refusal))
         outcome = "refused-command"
+    except LedgerError as error:
+        await work.sentinel.fault("ledger-failed", str(error))
+        outcome = "ledger-failed"
+    except Exception as error:
+        # A fault of this program must not leave a magnet at field; the record says what it was.
+        lines = traceback.format_exception(error)
+        work.event("warning", "program-fault", "".join(lines)[-4000:], "high")
+        await work.sentinel.fault("program-fault", f"{type(error).__name__}: {error}")
+        outcome = "program-fault"
     else:
         return "done"
     done.append(StepDone(name, outcome, work.clock() - began_s))

@@ -78,9 +78,9 @@ class Sampler:
                     due_s += skipped * self._interval_s
                 await asyncio.sleep(max(0.0, due_s - self._clock()))
         except Exception as error:
-            self._next.set_exception(error)
-            self._next.exception()  # whoever waits sees it; nobody waiting is no second error
-            raise
+            failed, self._next = self._next, asyncio.get_running_loop().create_future()
+            failed.set_exception(error)
+            failed.exception()  # whoever waits sees it; nobody waiting is no second error
 
     async def sample(self) -> None:
         """Take one reading and hand it on."""
@@ -93,6 +93,8 @@ class Sampler:
         self.number += 1
         reading = Reading(self.number, asked_s, unix_s, self.step, values, taken)
         self._ledger.append_reading(reading)
+        if self._ledger.failure:
+            await self._sentinel.fault("ledger-failed", self._ledger.failure)
         await self._sentinel.observe(reading, asked)
         self._on_reading(reading)
         done, self._next = self._next, asyncio.get_running_loop().create_future()

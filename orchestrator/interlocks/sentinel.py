@@ -85,6 +85,12 @@ class Sentinel:
             await self.answer(trip)
         return tuple(new)
 
+    async def fault(self, name: str, text: str) -> None:
+        """Latch and answer a fault of the night's own means, such as a disk that is full."""
+        trip = self._gate.latch(name, Response.PARK, text)
+        if trip:
+            await self.answer(trip)
+
     async def answer(self, trip: Trip) -> None:
         """Hold the magnet, or after a quench leave it to discharge; heaters off."""
         if trip.response >= Response.PARK:

@@ -51,7 +51,8 @@ class Ledger:
     All calls are synchronous and belong to one thread. With ``commit="each_second"`` commands,
     events, findings, checkpoints and taken requests are on disk when the call returns, and
     readings at the latest a second after they were appended, as long as some method is called at
-    least twice a second (`commit_if_due` is there for that).
+    least twice a second (`commit_if_due` is there for that). A disk that is full or gone is told
+    by `failure`; it stops no one from bringing the night to a safe end.
     """
 
     def __init__(
@@ -81,7 +82,8 @@ class Ledger:
         self._committed_number = 0
         self._ids = {"command": 0, "event": 0, "finding": 0, "checkpoint": 0}
         self._last_commit_s = clock()
-        self._busy_since_s: float | None = None
+        self._waiting_since_s: float | None = None
+        self._failure = ""
         self._commits = 0
         self._closed = False
 
@@ -163,6 +165,15 @@ class Ledger:
     def commits(self) -> int:
         """How many transactions have been committed."""
         return self._commits
+
+    @property
+    def failure(self) -> str:
+        """Why the file cannot be written; empty while it can.
+
+        Appending never raises for it: rows wait in memory and are tried again, and whoever runs
+        the night must bring it to a safe end.
+        """
+        return self._failure
 
     def append_reading(self, reading: Reading) -> None:
         """Append one reading.
@@ -260,13 +271,14 @@ class Ledger:
                 "WHERE taken_s IS NULL ORDER BY id"
             ).fetchall()
         except sqlite3.Error as error:
-            raise LedgerError(f"{self._file}: requests cannot be read: {error}") from error
+            self._failure = f"{self._file}: requests cannot be read: {error}"
+            return []
         return [RequestRecord(*row) for row in rows]
 
     def take_request(self, id: int, time_s: float) -> None:
         """Mark a request as taken up at a time of the night's clock; on disk at once."""
         self._waiting.setdefault(_TAKE_REQUEST, []).append((time_s, id))
-        self.commit()
+        self._commit_or_wait()
 
     def commit_if_due(self) -> None:
         """In a live night, commit when something has waited; cheap when nothing has."""
@@ -308,7 +320,8 @@ class Ledger:
         self._waiting.clear()
         self._committed_number = self._last_number
         self._last_commit_s = self._clock()
-        self._busy_since_s = None
+        self._waiting_since_s = None
+        self._failure = ""
         self._commits += 1
         return self._committed_number
 
@@ -343,7 +356,8 @@ class Ledger:
             self._commit_or_wait()
 
     def _commit_or_wait(self) -> None:
-        """Commit, but let another process's write pass first for a bounded time."""
+        """Commit; what cannot be written waits, and after a bounded time counts as a failure."""
+        now_s = self._clock()
         try:
             self.commit()
         except LedgerError as error:
@@ -351,11 +365,10 @@ class Ledger:
             busy = isinstance(cause, sqlite3.OperationalError) and (
                 getattr(cause, "sqlite_errorcode", 0) & 0xFF == sqlite3.SQLITE_BUSY
             )
-            now_s = self._clock()
-            if self._busy_since_s is None:
-                self._busy_since_s = now_s
-            if not busy or now_s - self._busy_since_s > _PATIENCE_S:
-                raise
+            if self._waiting_since_s is None:
+                self._waiting_since_s = now_s
+            if not busy or now_s - self._waiting_since_s > _PATIENCE_S:
+                self._failure = str(error)
             self._last_commit_s = now_s  # try again when next due, not at every reading
 
 
