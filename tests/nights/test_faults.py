@@ -133,7 +133,7 @@ def test_a_warm_stage_parks_the_rig_with_its_heater_off(tmp_path: Path) -> None:
         def hot(line: str) -> str | None:
             reply = inner(line)
             if reply and "TEMP?" in line and loop.time() > RAMPING_S:
-                first, *others = reply.split(";")
+                _, *others = reply.split(";")
                 return ";".join(["3.5E+01", *others])
             return reply
 
@@ -150,9 +150,7 @@ def test_a_person_may_hold_lift_the_hold_and_park(tmp_path: Path) -> None:
     def ask(world, panels, loop):  # type: ignore[no-untyped-def]
         def request(kind: str, name: str = "") -> None:
             folder = next((tmp_path / "nights").iterdir())
-            write_request(
-                folder, kind, name=name, reason="filling", person="A. Keeper", unix_s=0.0
-            )
+            write_request(folder, kind, name=name, reason="filling", person="A. Keeper", unix_s=0.0)
 
         loop.call_at(RAMPING_S, request, "hold")
         loop.call_at(RAMPING_S + 200, request, "acknowledge", "hold")
@@ -181,7 +179,7 @@ def test_a_hold_that_nobody_lifts_ends_in_a_parked_rig(tmp_path: Path) -> None:
     night = rehearse(tmp_path, faults=ask)
     assert night.done.outcome == "hold"
     assert night.done.parked == "parked"
-    assert RAMPING_S + 1800 < night.done.duration_s
+    assert night.done.duration_s > RAMPING_S + 1800
 
 
 def test_a_settle_that_takes_too_long_parks_if_the_sequence_says_so(tmp_path: Path) -> None:

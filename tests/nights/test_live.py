@@ -18,8 +18,10 @@ from tests.nights.rehearsing import TINY
 
 ROOT = Path(__file__).parents[2]
 PACE = "20"
-SHORT = TINY.replace('["0.6 K", "1 K"]', '["0.5 K"]').replace("5.5 T", "1.0 T").replace(
-    "6.5 T", "1.6 T"
+SHORT = (
+    TINY.replace('["0.6 K", "1 K"]', '["0.5 K"]')
+    .replace("5.5 T", "1.0 T")
+    .replace("6.5 T", "1.6 T")
 )
 
 
