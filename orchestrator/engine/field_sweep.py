@@ -68,15 +68,19 @@ async def sweep_field(work: Work, planned: PlannedSweep) -> None:
         "temperature_k": planned.temperature_k,
     }
     work.event("step", planned.name, phase="started", first_reading=first, **about)
-    await follow(work, legs, replan)
-    await work.wait(3 * filter_s)
-    last = work.sampler.number
-    work.event(
-        "step",
-        planned.name,
-        phase="finished",
-        outcome="done",
-        first_reading=first,
-        last_reading=last,
-        **about,
-    )
+    outcome = "interrupted"
+    try:
+        await follow(work, legs, replan)
+        await work.wait(3 * filter_s)
+        outcome = "done"
+    finally:
+        # What a trip cut short is still data: the analysis gets the readings up to there.
+        work.event(
+            "step",
+            planned.name,
+            phase="finished",
+            outcome=outcome,
+            first_reading=first,
+            last_reading=work.sampler.number,
+            **about,
+        )

@@ -4,6 +4,8 @@ from pathlib import Path
 
 import pytest
 
+from orchestrator.analysis.analyst import find_in_ledger
+from orchestrator.ledger.requests import write_request
 from tests.nights.rehearsing import TINY, rehearse
 
 BOTH = TINY.replace("5.5 T", "4.5 T").replace(
@@ -59,3 +61,35 @@ def test_sweeps_down_at_negative_fields_and_both_ways_are_safe(
             low, high = sorted((one.data["from_t"], one.data["to_t"]))
             assert min(fields) == pytest.approx(low, abs=0.02)
             assert max(fields) == pytest.approx(high, abs=0.02)
+
+
+def test_a_sweep_that_is_cut_short_still_tells_what_it_saw(tmp_path: Path) -> None:
+    # From 6.5 T down to 4.5 T; the rig is asked to park when most of the way is done.
+    one_sweep = BOTH.replace(', "1 K"', "").replace('"nearest"', '"as-given"')
+    one_sweep = one_sweep.replace('from = "4.5 T"', 'from = "6.5 T"').replace(
+        'to = "6.5 T"', 'to = "4.5 T"'
+    )
+    for place in ("whole", "cut"):
+        (tmp_path / place).mkdir()
+    whole = rehearse(tmp_path / "whole", sequence=one_sweep)
+    sweep = next(one for one in whole.reader.events() if one.kind == "plan")
+    cut_s = sweep.time_s + 0.6 * sweep.data["duration_s"]
+
+    def ask(world, panels, loop):  # type: ignore[no-untyped-def]
+        def park() -> None:
+            folder = next((tmp_path / "cut" / "nights").iterdir())
+            write_request(folder, "park", name="", reason="late", person="A. Keeper", unix_s=0.0)
+
+        loop.call_at(cut_s, park)
+
+    night = rehearse(tmp_path / "cut", sequence=one_sweep, faults=ask)
+    assert (night.done.outcome, night.done.parked) == ("park", "parked")
+    ended = [
+        one.data
+        for one in night.reader.events()
+        if one.kind == "step" and one.data.get("phase") == "finished" and one.name == "sweep-1"
+    ]
+    assert ended[0]["outcome"] == "interrupted"
+    assert ended[0]["last_reading"] - ended[0]["first_reading"] > 100
+    fastest_t = max(one["frequency_t"] for one in find_in_ledger(night.folder)["orbits"])
+    assert fastest_t == pytest.approx(1133.0, rel=0.01)
