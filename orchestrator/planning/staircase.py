@@ -150,7 +150,7 @@ def _breakpoints(lengths: Array, rates: Array, legs_max: int) -> list[int]:
         gained = better < best * (1 - 1e-6)
         came.append(np.where(gained, previous, -1))
         best = np.where(gained, better, best)
-        if not gained[count]:
+        if not gained.any():
             break
     breaks, at = [count], count
     for layer in reversed(came[1:]):
