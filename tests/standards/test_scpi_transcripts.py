@@ -9,7 +9,8 @@ import pytest
 
 from simulators.front_panel import LINE_MAX, FrontPanel
 from simulators.lockin import LockInParameters
-from simulators.panels import LockInPanel, MagnetPanel
+from simulators.lockin_panel import LockInPanel
+from simulators.magnet_panel import MagnetPanel
 from simulators.status import QUEUE_LENGTH
 from simulators.world import World, WorldParameters
 
