@@ -46,6 +46,16 @@ class MagnetPanel(FrontPanel):
             Command("MEASure:VOLTage", get=self._voltage),
         ]  # fmt: skip
 
+    def pending(self) -> bool:
+        """A ramp is under way."""
+        self._world.advance()
+        return self._coil.lead_velocity_t_per_s != 0.0
+
+    def self_test(self) -> int:
+        """1 while a quench is latched."""
+        self._world.advance()
+        return int(self._coil.quenched)
+
     def operation(self) -> int:
         """Bit 3: the output's field moves. Bit 8: the switch is warm."""
         self._world.advance()

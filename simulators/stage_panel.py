@@ -48,6 +48,10 @@ class StagePanel(FrontPanel):
             Command("MEASure:HEATer:POWer", get=self._power),
         ]
 
+    def pending(self) -> bool:
+        """The set-point ramps, or the thermometer has not come to it."""
+        return self.operation() != 0
+
     def operation(self) -> int:
         """Bit 1: thermometer further than 1 % from the set-point, heater on. Bit 3: it ramps."""
         self._world.advance()
