@@ -29,8 +29,8 @@ class Charge:
 
     @property
     def spent(self) -> bool:
-        """Whether the base is not held cold."""
-        return self.limited and (self.recharging or self.left_j <= 0.0)
+        """Whether the base is not held cold: nothing is left, as while the charge is renewed."""
+        return self.limited and self.left_j <= 0.0
 
     @property
     def base_k(self) -> float:

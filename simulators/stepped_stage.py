@@ -59,6 +59,18 @@ class SteppedStage:
         self._period_s = p.loop_period_s
         self._sample_lag_s = max(p.sample_lag_s, LAG_MIN_S)
         self._thermometer_lag_s = max(p.thermometer_lag_s, LAG_MIN_S)
+        self._stays = (
+            math.exp(-self._period_s / self._sample_lag_s),
+            math.exp(-self._period_s / self._thermometer_lag_s),
+        )
+        self._coefficients = (
+            p.heat_capacity_j_per_k,
+            p.heat_capacity_linear_j_per_k2,
+            p.heat_capacity_cubic_j_per_k4,
+            p.curie_j_k_per_t2,
+        )
+        self._eddy = p.eddy_w_s2_per_t2
+        self._limited = p.charge_j > 0.0
         self._power_n = p.cooling_exponent + 1.0
         self._flow_scale = p.cooling_w_per_k / (
             self._power_n * p.cooling_reference_k**p.cooling_exponent
@@ -220,7 +232,9 @@ class SteppedStage:
         G / (2 t_r).
         """
         p = self.parameters
-        heat_capacity, _ = self._capacity(stage_k, self._field_t)
+        c0, gamma, beta, curie = self._coefficients
+        heat_capacity = c0 + (gamma + beta * stage_k * stage_k) * stage_k
+        heat_capacity += curie * (self._field_t / stage_k) ** 2
         conductance = self._flow_scale * self._power_n * stage_k**p.cooling_exponent
         proportional = 2 * heat_capacity / p.response_s - conductance
         if proportional < 0.0:
@@ -257,54 +271,55 @@ class SteppedStage:
     def _see_base(self) -> None:
         self._base_flow = self._flow_scale * self._charge.base_k**self._power_n
 
-    def _capacity(self, stage_k: float, field_t: float) -> tuple[float, float]:
-        """Heat capacity and its derivative by temperature."""
-        p = self.parameters
-        square = stage_k * stage_k
-        magnetic = p.curie_j_k_per_t2 * field_t * field_t / square
-        gamma, beta = p.heat_capacity_linear_j_per_k2, p.heat_capacity_cubic_j_per_k4
-        return (
-            p.heat_capacity_j_per_k + (gamma + beta * square) * stage_k + magnetic,
-            gamma + 3.0 * beta * square - 2.0 * magnetic / stage_k,
-        )
-
     def _moved(self, span_s: float, keep: bool) -> tuple[float, float, float]:
         """Temperatures a time after the kept ones; `keep` counts the heat that has flowed."""
-        p = self.parameters
         stage_k, sample_k, thermometer_k = self._kept
-        field_t, rate = self._field_t, self._rate_t_per_s
-        n = self._power_n
-        power_w = self._heater_w + p.eddy_w_s2_per_t2 * rate * rate + self._excitation_w
+        field_t, rate, n = self._field_t, self._rate_t_per_s, self._power_n
+        c0, gamma, beta, curie = self._coefficients
+        flow_scale, base_flow, rise_k = self._flow_scale, self._base_flow, self._rise_k
+        power_w = self._heater_w + self._eddy * rate * rate + self._excitation_w
         left = step = span_s
         while left > 0.0:
-            flow_w = self._flow_scale * stage_k**n - self._base_flow
-            conductance = n * (flow_w + self._base_flow) / stage_k
+            gross_w = flow_scale * stage_k**n
+            flow_w = gross_w - base_flow
+            square = stage_k * stage_k
+            c, c_slope = c0 + (gamma + beta * square) * stage_k, gamma + 3.0 * beta * square
+            minus_w_per_k, magnetic_w = n * gross_w / stage_k, 0.0
             while True:
-                middle_t = field_t + 0.5 * rate * step
-                magnetic_w = p.curie_j_k_per_t2 * middle_t * rate / stage_k
-                c, c_slope = self._capacity(stage_k, middle_t)
-                velocity = (power_w + magnetic_w - flow_w) / c
-                x = -(conductance + magnetic_w / stage_k + velocity * c_slope) / c * step
-                rise = velocity * step
+                if curie:
+                    middle_t = field_t + 0.5 * rate * step
+                    magnetic_c = curie * middle_t * middle_t / square
+                    magnetic_w = curie * middle_t * rate / stage_k
+                    velocity = (power_w + magnetic_w - flow_w) / (c + magnetic_c)
+                    slope = c_slope - 2.0 * magnetic_c / stage_k
+                    x = minus_w_per_k + magnetic_w / stage_k + velocity * slope
+                    x *= -step / (c + magnetic_c)
+                else:
+                    velocity = (power_w - flow_w) / c
+                    x = -(minus_w_per_k + velocity * c_slope) / c * step
                 if x < 1.0:
-                    rise *= math.expm1(x) / x if abs(x) > 1e-9 else 1.0
+                    rise = velocity * step
+                    if abs(x) > 1e-9:
+                        rise *= math.expm1(x) / x
                     if abs(rise) <= _CHANGE_MAX * stage_k:
                         break
                 step *= 0.5
             before_k, stage_k = stage_k, stage_k + rise
-            if keep and p.charge_j:
-                after_w = self._flow_scale * stage_k**n - self._base_flow
+            if keep and self._limited:
+                after_w = flow_scale * stage_k**n - base_flow
                 self._drawn_j += 0.5 * (flow_w + after_w) * step
             slope = rise / step
-            sample_k = _followed(sample_k, before_k + self._rise_k, slope, step, self._sample_lag_s)
-            thermometer_k = _followed(thermometer_k, before_k, slope, step, self._thermometer_lag_s)
+            if step == self._period_s:
+                sample_stays, thermometer_stays = self._stays
+            else:
+                sample_stays = math.exp(-step / self._sample_lag_s)
+                thermometer_stays = math.exp(-step / self._thermometer_lag_s)
+            # First-order lags, exactly, behind what rises evenly.
+            behind = before_k - slope * self._sample_lag_s + rise_k
+            sample_k = behind + rise + (sample_k - behind) * sample_stays
+            behind = before_k - slope * self._thermometer_lag_s
+            thermometer_k = behind + rise + (thermometer_k - behind) * thermometer_stays
             field_t += rate * step
             left -= step
             step = min(left, 2.0 * step)
         return stage_k, sample_k, thermometer_k
-
-
-def _followed(value: float, leader: float, slope: float, step: float, lag: float) -> float:
-    """First-order lag, exactly, behind what rises evenly from `leader`."""
-    behind = leader - slope * lag
-    return behind + slope * step + (value - behind) * math.exp(-step / lag)

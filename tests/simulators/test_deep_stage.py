@@ -162,6 +162,17 @@ def test_excitation_warms_the_sample_by_its_power_over_the_conductance() -> None
     assert world.sample_k - world.stage.stage_k == pytest.approx(0.08 * 1.2, rel=1e-6)
 
 
+@pytest.mark.parametrize("after_s", [0.02, 0.05, 0.1, 0.33, 1.0, 2.71])
+def test_what_is_seen_between_two_looks_of_the_loop_is_exact(after_s: float) -> None:
+    """1 - exp(-t / lag) from the loop's first look at 0.1 s, first-order lag of 1 s (textbook)."""
+    _, world, clock = make(
+        sample_conductance_w_per_k=1e-8, start_k=0.3, heat_capacity_j_per_k=1.0, response_s=4.0
+    )
+    clock.time_s = 0.1 + after_s
+    wanted = 0.02 * (1 - math.exp(-after_s))
+    assert world.sample_k - 0.3 == pytest.approx(wanted, rel=1e-6)
+
+
 def test_one_shot_holds_its_base_until_its_charge_is_used_up_and_is_recharged() -> None:
     """Holding time = charge / (leak + load): 2 J at 1 mW + 1 mW is 1000 s."""
     panel, world, clock = make(
