@@ -163,8 +163,10 @@ class World:
 
     def _excitation_w(self, field_t: float) -> float:
         """Power that the lock-ins' currents leave in the sample, its oscillations left out."""
-        ohm = self.sample.background_ohm(field_t)
-        return sum(lock_in.current_a**2 for lock_in in self.lock_ins.values()) * ohm
+        square = 0.0
+        for lock_in in self.lock_ins.values():
+            square += lock_in.current_a**2
+        return square * self.sample.background_ohm(field_t)
 
     def _plan(self, duration_s: float) -> tuple[int, bool]:
         """How many cubics follow the signal, and whether the oscillations are worth following.
