@@ -87,6 +87,7 @@ class Link:
         self._retries, self._retry_pause_s, self._gap_s = retries, retry_pause_s, gap_s
         self._worker: Worker | None = None
         self._inline, self._closed = inline, False
+        self._timeout_s = timeout_s
         # A job is at most three proofs and one exchange, behind one that was given up.
         self._stall_s = 10 * timeout_s + 5
         self._lock = asyncio.Lock()
@@ -177,7 +178,7 @@ class Link:
             raise Closed(self.name, self.address, text, problem="the link was closed")
         if self._gap_s:
             await asyncio.sleep(max(0.0, self._last_s + self._gap_s - self._now()))
-        session, trace = self._session, self._trace
+        session, trace, began_s = self._session, self._trace, self._now()
         if trace:
             trace(self._now(), ">", text)
         try:
@@ -188,6 +189,9 @@ class Link:
                     text, lambda: session.exchange(text, parse is not None)
                 )
         except LinkError as error:
+            if self._inline and isinstance(error, Timeout):
+                # A simulated instrument's silence is known at once; it still costs the time.
+                await asyncio.sleep(max(0.0, began_s + self._timeout_s - self._now()))
             if trace:
                 trace(self._now(), "!", error.problem)
             raise
@@ -282,7 +286,8 @@ async def open_link(
         Before each of them.
     inline : bool
         True makes VISA calls directly in the event loop: for rehearsals, where a clock that jumps
-        would not see a thread's time. False gives the session a thread of its own.
+        would not see a thread's time; there a timeout is slept in the loop's time. False gives the
+        session a thread of its own.
     identity_query : str
         A query whose answer never changes.
     write_end, read_end : str

@@ -10,6 +10,7 @@ import math
 import re
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass
+from functools import partial
 
 from simulators import syntax
 from simulators.status import Refused, StatusModel
@@ -107,6 +108,24 @@ def _nodes(header: str) -> list[tuple[str, bool]]:
 Step = Callable[[], str | None]
 
 
+class Busy(Exception):
+    """A message waits, at *WAI or *OPC?, for an operation that is under way.
+
+    Attributes
+    ----------
+    go_on : callable
+        Carries the rest of the message out; raises Busy again while the operation goes on.
+    """
+
+    def __init__(self, go_on: Callable[[], str | None]) -> None:
+        super().__init__("waiting for an operation to be complete")
+        self.go_on = go_on
+
+
+class _Waits(Exception):
+    """A step that cannot be done before all operations are complete."""
+
+
 class FrontPanel:
     """One instrument as its front panel: text in, text out.
 
@@ -120,7 +139,7 @@ class FrontPanel:
 
     def __init__(self, model: str, serial: str) -> None:
         self.identity = f"NIGHTFIELD,{model},{serial},{VERSION}"
-        self.status = StatusModel(self.operation, self.questionable)
+        self.status = StatusModel(self.operation, self.questionable, self.pending)
         self._table: dict[str, Command] = {}
         self._commands: list[Command] = []
         self._kept: dict[str, tuple[Step, ...]] = {}
@@ -143,6 +162,14 @@ class FrontPanel:
         """QUEStionable condition register."""
         return 0
 
+    def pending(self) -> bool:
+        """Whether an overlapped operation, such as a ramp, is under way."""
+        return False
+
+    def self_test(self) -> int:
+        """Result of *TST?: 0 is a pass."""
+        return 0
+
     def reset(self) -> None:
         """What *RST does to the instrument."""
 
@@ -160,14 +187,25 @@ class FrontPanel:
         -------
         str or None
             Answers joined by ``;`` without line end; None if nothing was asked or answered.
+
+        Raises
+        ------
+        Busy
+            The message waits for an operation to be complete; the exception carries the rest.
         """
         steps = self._kept.get(line)
         if steps is None:
             steps = self._prepare(line)
-        answers: list[str] = []
-        for step in steps:
+        return self._carry_out(steps, 0, [], line)
+
+    def _carry_out(
+        self, steps: tuple[Step, ...], first: int, answers: list[str], line: str
+    ) -> str | None:
+        for at in range(first, len(steps)):
             try:
-                answer = step()
+                answer = steps[at]()
+            except _Waits:
+                raise Busy(partial(self._carry_out, steps, at, answers, line)) from None
             except Refused as refused:
                 self.status.note(refused.code, refused.detail)
             except Exception:
@@ -188,10 +226,13 @@ class FrontPanel:
         if len(line) > LINE_MAX:
             return (self._refusing(Refused(-363)),)
         steps: list[Step] = []
-        path = ""
+        path, indefinite = "", False
         try:
             for unit in syntax.units(line):
                 command, path = self._find(unit.header, path)
+                if unit.query and indefinite:
+                    raise Refused(-440, syntax.printable(unit.header))
+                indefinite = indefinite or command.header == "*IDN"
                 steps.append(self._step(command, unit))
                 if not unit.query:
                     steps.append(self.status.observe)
@@ -309,14 +350,14 @@ class FrontPanel:
             Command("*ESE", get=lambda: str(status.event_enable), set=self._set_ese, numeric=byte),
             Command("*ESR", get=lambda: str(status.take_event())),
             Command("*IDN", get=lambda: self.identity),
-            Command("*OPC", get=lambda: "1", do=status.complete),
-            Command("*RST", do=self.reset),
+            Command("*OPC", get=self._completed, do=status.complete),
+            Command("*RST", do=self._reset),
             Command(
                 "*SRE", get=lambda: str(status.service_enable), set=self._set_sre, numeric=byte
             ),
             Command("*STB", get=lambda: str(status.byte())),
-            Command("*TST", get=lambda: "0"),
-            Command("*WAI", do=lambda: None),
+            Command("*TST", get=self._test),
+            Command("*WAI", do=self._wait),
             Command("SYSTem:ERRor[:NEXT]", get=status.errors.pop),
             Command("SYSTem:ERRor:COUNt", get=lambda: str(len(status.errors))),
             Command("SYSTem:VERSion", get=lambda: "1999.0"),
@@ -347,6 +388,24 @@ class FrontPanel:
                     )
                 )
         return common
+
+    def _wait(self) -> None:
+        if self.pending():
+            raise _Waits
+
+    def _completed(self) -> str:
+        self._wait()
+        return "1"
+
+    def _reset(self) -> None:
+        self.status.forget_completion()
+        self.reset()
+
+    def _test(self) -> str:
+        result = self.self_test()
+        if result:
+            self.status.note(-330)
+        return str(result)
 
     def _set_ese(self, value: float) -> None:
         self.status.event_enable = int(value)

@@ -106,7 +106,7 @@ class LockIn:
         rates_t_per_s : sequence of float or None
             dB/dt at the same instants; None where the field stands still.
         """
-        values = np.array(ohms) * (self.amplitude_v / self.parameters.series_resistance_ohm)
+        values = np.array(ohms) * self.current_a
         if rates_t_per_s is not None and self.parameters.pickup_v_s_per_t:
             values += np.array(rates_t_per_s) * self.parameters.pickup_v_s_per_t
         pieces = (len(values) - 1) // lowpass.NODES_PER_PIECE
@@ -123,6 +123,11 @@ class LockIn:
             self._noise_due_s = 0.0
 
     # -- what can be seen ----------------------------------------------------------------------
+
+    @property
+    def current_a(self) -> float:
+        """Current through the sample, rms."""
+        return self.amplitude_v / self.parameters.series_resistance_ohm
 
     @property
     def clean_x_v(self) -> float:

@@ -26,23 +26,35 @@ ERROR_TEXTS = {
     -123: "Exponent too large",
     -124: "Too many digits",
     -128: "Numeric data not allowed",
+    -130: "Suffix error",
     -131: "Invalid suffix",
     -138: "Suffix not allowed",
     -141: "Invalid character data",
     -148: "Character data not allowed",
     -151: "Invalid string data",
     -158: "String data not allowed",
+    -161: "Invalid block data",
+    -168: "Block data not allowed",
     -200: "Execution error",
+    -203: "Command protected",
+    -220: "Parameter error",
     -221: "Settings conflict",
     -222: "Data out of range",
+    -223: "Too much data",
     -224: "Illegal parameter value",
+    -230: "Data corrupt or stale",
     -240: "Hardware error",
     -241: "Hardware missing",
     -310: "System error",
+    -330: "Self-test failed",
     -350: "Queue overflow",
+    -360: "Communication error",
     -363: "Input buffer overrun",
+    -400: "Query error",
     -410: "Query INTERRUPTED",
     -420: "Query UNTERMINATED",
+    -430: "Query DEADLOCKED",
+    -440: "Query UNTERMINATED after indefinite response",
 }
 
 
@@ -161,9 +173,22 @@ class EventGroup:
 
 
 class StatusModel:
-    """All of an instrument's status."""
+    """All of an instrument's status.
 
-    def __init__(self, operation: Callable[[], int], questionable: Callable[[], int]) -> None:
+    Parameters
+    ----------
+    operation, questionable : callable
+        Condition bits of the two registers.
+    pending : callable
+        Whether an overlapped operation is under way, such as a ramp.
+    """
+
+    def __init__(
+        self,
+        operation: Callable[[], int],
+        questionable: Callable[[], int],
+        pending: Callable[[], bool] = lambda: False,
+    ) -> None:
         self.errors = ErrorQueue()
         self.operation = EventGroup(operation)
         self.questionable = EventGroup(questionable)
@@ -171,6 +196,9 @@ class StatusModel:
         self.event_enable = 0
         self.service_enable = 0
         self.message_available = False
+        self._pending = pending
+        self._completion_asked = False
+        self._polled = 0
 
     def note(self, code: int, detail: str = "") -> None:
         """Enter an error in queue and event register."""
@@ -184,6 +212,7 @@ class StatusModel:
 
     def take_event(self) -> int:
         """*ESR?: read and clear."""
+        self._see_completion()
         event, self.event = self.event, 0
         return event
 
@@ -191,13 +220,29 @@ class StatusModel:
         """Latch the transitions of both condition registers; done after every order."""
         self.operation.observe()
         self.questionable.observe()
+        self._see_completion()
 
     def complete(self) -> None:
-        """*OPC: nothing is ever pending here, so the bit is set at once."""
-        self.event |= EventStatus.OPERATION_COMPLETE
+        """*OPC: set the bit as soon as nothing is pending."""
+        self._completion_asked = True
+        self._see_completion()
+
+    def _see_completion(self) -> None:
+        if self._completion_asked and not self._pending():
+            self._completion_asked = False
+            self.event |= EventStatus.OPERATION_COMPLETE
+
+    def forget_completion(self) -> None:
+        """*RST and *CLS: an *OPC that still waits is given up."""
+        self._completion_asked = False
+
+    def user_request(self) -> None:
+        """Somebody has pressed a key at the instrument."""
+        self.event |= EventStatus.USER_REQUEST
 
     def byte(self) -> int:
         """*STB?: with the master summary in bit 6."""
+        self._see_completion()
         value = 0
         if self.errors:
             value |= StatusByte.ERROR_QUEUE
@@ -213,8 +258,22 @@ class StatusModel:
             value |= StatusByte.MASTER_SUMMARY
         return int(value)
 
+    def serial_poll(self, message_available: bool) -> int:
+        """Status byte as a serial poll gives it: bit 6 asks for service, once for each reason.
+
+        A reason that has come since the last poll sets it; the poll clears it.
+        """
+        value = self.byte() & ~StatusByte.MASTER_SUMMARY
+        if message_available:
+            value |= StatusByte.MESSAGE_AVAILABLE
+        reasons = value & self.service_enable
+        request = StatusByte.MASTER_SUMMARY if reasons & ~self._polled else 0
+        self._polled = reasons
+        return int(value | request)
+
     def clear(self) -> None:
         """*CLS: event registers and error queue."""
+        self.forget_completion()
         self.event = 0
         self.errors.clear()
         self.operation.clear()

@@ -12,6 +12,10 @@ _NUMBER = re.compile(r"([+-]?(?:(\d+)\.?(\d*)|\.(\d+)))(?:[eE] ?([+-]?\d+))?", r
 _SUFFIX = re.compile(r"[A-Za-z][A-Za-z0-9/.\-]*", re.ASCII)
 _BASED = re.compile(r"#(?:[hH]([0-9A-Fa-f]+)|[qQ]([0-7]+)|[bB]([01]+))", re.ASCII)
 _WORD = re.compile(r"[A-Za-z]\w*", re.ASCII)
+_NONZERO = frozenset("123456789")
+
+WHITE = "".join(chr(code) for code in range(33) if code != 10)
+"""White space of IEEE 488.2 7.4.1.2: ASCII 0 to 9 and 11 to 32 (from memory)."""
 
 _MULTIPLIERS = {
     "EX": 1e18, "PE": 1e15, "G": 1e9, "MA": 1e6, "K": 1e3, "": 1.0,
@@ -58,19 +62,58 @@ class Unit:
 
 
 def _split(text: str, separator: str) -> Iterator[str]:
-    """Split outside quotes; a string that does not end is -151."""
-    quote, start = "", 0
+    """Split outside quotes and blocks; a string that does not end is -151, a block -161."""
+    quote, start, block_end = "", 0, 0
     for i, char in enumerate(text):
+        if i < block_end:
+            continue
         if quote:
             quote = "" if char == quote else quote
         elif char in "\"'":
             quote = char
+        elif char == "#" and (length := _block_length(text, i)):
+            block_end = i + length
+            if block_end > len(text):
+                raise Refused(-161, "block without end")
         elif char == separator:
             yield text[start:i]
             start = i + 1
     if quote:
         raise Refused(-151, "string without end")
     yield text[start:]
+
+
+def _block_length(text: str, start: int) -> int:
+    """Characters of a definite length block that begins here with its ``#``; 0 if none does.
+
+    One whose own length is not there yet counts as one character longer than the text.
+    """
+    digits = text[start + 1 : start + 2]
+    if digits not in _NONZERO:
+        return 0
+    first = start + 2 + int(digits)
+    length = text[start + 2 : first]
+    if len(length) < int(digits):
+        return len(text) - start + 1 if not length or length.isdecimal() else 0
+    return first - start + int(length) if length.isascii() and length.isdecimal() else 0
+
+
+def inside_block(text: str) -> bool:
+    """Whether a message ends inside a definite length block, so that a line end belongs to it."""
+    at, quote = 0, ""
+    while at < len(text):
+        char = text[at]
+        if quote:
+            quote = "" if char == quote else quote
+        elif char in "\"'":
+            quote = char
+        elif char == "#" and (length := _block_length(text, at)):
+            if at + length > len(text):
+                return True
+            at += length
+            continue
+        at += 1
+    return False
 
 
 def units(message: str) -> Iterator[Unit]:
@@ -85,7 +128,7 @@ def units(message: str) -> Iterator[Unit]:
     for text in _split(message, ";"):
         if empty:
             raise Refused(-102, "nothing between separators")
-        if stripped := text.strip():
+        if stripped := text.strip(WHITE):
             yield _unit(stripped)
         else:
             empty = True  # let pass at the end of a message only
@@ -96,10 +139,10 @@ def _unit(text: str) -> Unit:
     if not match:
         raise _bad_character(text[0], text)
     rest = text[match.end() :]
-    if rest and not rest[0].isspace():
+    if rest and rest[0] not in WHITE:
         raise _bad_character(rest[0], text)
-    rest = rest.strip()
-    parameters = tuple(p.strip() for p in _split(rest, ",")) if rest else ()
+    rest = rest.strip(WHITE)
+    parameters = tuple(p.strip(WHITE) for p in _split(rest, ",")) if rest else ()
     if "" in parameters:
         raise Refused(-109, "nothing between commas") if len(parameters) > 1 else Refused(-102)
     return Unit(match[1], bool(match[2]), parameters)
@@ -136,7 +179,7 @@ def number(text: str, factors: dict[str, float]) -> float:
         if len(exponent.lstrip("+-0")) > 5 or abs(int(exponent)) > 32000:
             raise Refused(-123)
         value = float(f"{match[1]}e{exponent}")
-        return value * _factor(text[match.end() :].strip(), factors)
+        return value * _factor(text[match.end() :].strip(WHITE), factors)
     if based := _BASED.fullmatch(text):
         digits = next(g for g in based.groups() if g)
         if len(digits) > 255:
@@ -160,6 +203,8 @@ def _factor(suffix: str, factors: dict[str, float]) -> float:
 
 def not_expected(text: str, numeric: bool = False) -> Refused:
     """Error for a parameter of the wrong kind."""
+    if _block_length(text, 0):
+        return Refused(-168)
     if text[0] in "\"'":
         return Refused(-158)
     if _WORD.fullmatch(text):

@@ -10,6 +10,7 @@ from simulators.exchange import LineAssembler
 from simulators.front_panel import FrontPanel
 
 _CHUNK = 65536
+_LOOK_S = 0.02
 
 
 @dataclass
@@ -102,7 +103,17 @@ async def _talk(
     sock = writer.get_extra_info("socket")
     sock.setsockopt(socket.IPPROTO_TCP, socket.TCP_NODELAY, 1)
     lines = LineAssembler(panel)
-    while data := await reader.read(_CHUNK):
-        for answer in lines.feed(data):
+    while True:
+        try:
+            # While a message waits for an operation, its answer is looked after meanwhile.
+            async with asyncio.timeout(_LOOK_S if lines.busy else None):
+                data = await reader.read(_CHUNK)
+        except TimeoutError:
+            answers = lines.go_on()
+        else:
+            if not data:
+                return
+            answers = lines.feed(data)
+        for answer in answers:
             writer.write(answer)
         await writer.drain()

@@ -75,6 +75,15 @@ class _PanelLibrary(SimVisaLibrary):
         with self._one_at_a_time:
             return super().write(session, data)
 
+    def read_stb(self, session: VISASession) -> tuple[int, constants.StatusCode]:
+        """viReadSTB: a serial poll, where the interface has one; a raw socket has none."""
+        opened: Any = self.sessions[session]
+        if not isinstance(opened.device, MessagePort):
+            raise errors.VisaIOError(_STATUS.error_nonsupported_operation)
+        with self._one_at_a_time:
+            port = opened.device
+            return port.panel.status.serial_poll(port.message_available), _STATUS.success
+
     def clear(self, session: VISASession) -> constants.StatusCode:
         """viClear: the port forgets what is unread and half written."""
         opened: Any = self.sessions[session]

@@ -58,7 +58,7 @@ class World:
         self._now = now
         self._time_s = now()
         self.coil = Coil(parameters.coil)
-        self.stage = Stage(parameters.stage)
+        self.stage = Stage(parameters.stage, self._excitation_w)
         self.sample = Sample(parameters.sample)
         self.helium = HeliumBath(parameters.helium)
         self.lock_ins = {p.name: LockIn(p, self.noise(p.name)) for p in parameters.lock_ins}
@@ -151,7 +151,7 @@ class World:
         coil.advance(duration_s)
         if coil.quenched:
             velocity = (coil.coil_t - before_t) / duration_s
-        stage.advance(duration_s, velocity)
+        stage.advance(duration_s, velocity, before_t)
         self.helium.advance(duration_s, 0.0 if coil.quenched else velocity, coil.heater)
         if coil.quenched:
             self.helium.absorb(energy_j - coil.energy_j)
@@ -160,6 +160,13 @@ class World:
         if self.lock_ins:
             end = (stage.sample_k, stage.sample_slope_k_per_s)
             self._measure(duration_s, fields, (start_k, start_slope), end, oscillates)
+
+    def _excitation_w(self, field_t: float) -> float:
+        """Power that the lock-ins' currents leave in the sample, its oscillations left out."""
+        square = 0.0
+        for lock_in in self.lock_ins.values():
+            square += lock_in.current_a**2
+        return square * self.sample.background_ohm(field_t)
 
     def _plan(self, duration_s: float) -> tuple[int, bool]:
         """How many cubics follow the signal, and whether the oscillations are worth following.

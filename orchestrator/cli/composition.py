@@ -65,12 +65,16 @@ def load_simulated(world: Path | None, rig: Rig) -> Simulated:
                 value=f'"{lock_in.name}"',
                 allowed=", ".join(sorted(names)),
             )
+    try:
+        _stage_parameters(rig, model)
+    except ValueError as error:
+        raise document.refuse(("stage",), str(error)) from None
     return Simulated(model, document)
 
 
 def world_parameters(rig: Rig, world: WorldFile, seed: int) -> WorldParameters:
     """The simulated world: what the world file says, and what the rig says where it is silent."""
-    magnet, stage = rig.magnet, rig.stage
+    magnet = rig.magnet
     coil: dict[str, Any] = {
         "coil_constant_t_per_a": magnet.coil_constant_t_per_a,
         "inductance_h": magnet.inductance_h,
@@ -95,9 +99,7 @@ def world_parameters(rig: Rig, world: WorldFile, seed: int) -> WorldParameters:
     return WorldParameters(
         seed=seed,
         coil=CoilParameters(**coil | world.coil.given()),
-        stage=StageParameters(
-            **{"eddy_w_s2_per_t2": stage.eddy_coefficient_w_s2_per_t2} | world.stage.given()
-        ),
+        stage=_stage_parameters(rig, world),
         sample=SampleParameters(
             resistance_ohm=sample.resistance_ohm,
             magnetoresistance_per_t=sample.magnetoresistance_per_t,
@@ -109,6 +111,11 @@ def world_parameters(rig: Rig, world: WorldFile, seed: int) -> WorldParameters:
         lock_ins=lock_ins,
         gauges=tuple(GaugeParameters(one.name) for one in rig.gauges),
     )
+
+
+def _stage_parameters(rig: Rig, world: WorldFile) -> StageParameters:
+    eddy = {"eddy_w_s2_per_t2": rig.stage.eddy_coefficient_w_s2_per_t2}
+    return StageParameters(**eddy | world.stage.given())
 
 
 def truth_of(world: WorldFile) -> list[dict[str, float]]:

@@ -66,7 +66,6 @@ def at_full_speed(
             folder=folder,
             description=description,
             commit="batched",
-            parallel=False,
             clock=clock,
             wall=lambda: evening_unix_s + clock(),
             on_reading=progress.tell,

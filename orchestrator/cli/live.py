@@ -60,7 +60,6 @@ def live_night(
                     folder=folder,
                     description=replace(description, broker=f"127.0.0.1:{beside.port}"),
                     commit="each_second",
-                    parallel=True,
                     clock=asyncio.get_running_loop().time,
                     wall=time.time,
                     on_reading=progress.tell,

@@ -40,8 +40,6 @@ class Setting:
         What the ledger says of it.
     commit : {"each_second", "batched"}
         How readings get to disk.
-    parallel : bool
-        Whether instruments are polled at once.
     clock, wall : Callable[[], float]
         The night's clock, and wall time.
     on_reading : Callable[[Reading], None]
@@ -53,7 +51,6 @@ class Setting:
     folder: Path
     description: NightDescription
     commit: CommitMode
-    parallel: bool
     clock: Callable[[], float]
     wall: Callable[[], float]
     on_reading: Callable[[Reading], None]
@@ -124,7 +121,6 @@ def _assemble(
         ledger,
         sentinel,
         interval_s=files.rig.sampling.interval_s,
-        parallel=setting.parallel,
         clock=setting.clock,
         wall=setting.wall,
         on_reading=teller.tell,

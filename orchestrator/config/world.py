@@ -78,26 +78,84 @@ class Coil(Part):
         return values
 
 
+class ThermometerError(Strict):
+    """At ``field`` the thermometer shows (1 + ``relative``) times the true temperature."""
+
+    field_t: Tesla = Field(alias="field")
+    relative: Annotated[float, Quantity("1", above=-1, most=1)]
+
+
 class StagePart(Part):
-    """The sample stage and its thermometer."""
+    """The sample stage, its cold end and its thermometer."""
 
     base_k: Kelvin | None = Field(default=None, alias="base")
     maximum_k: Kelvin | None = Field(default=None, alias="maximum")
     start_k: Kelvin | None = Field(default=None, alias="start")
-    heat_capacity_j_per_k: Annotated[float, Quantity("J/K", above=0, most=1e3)] | None = Field(
+    heat_capacity_j_per_k: Annotated[float, Quantity("J/K", least=0, most=1e3)] | None = Field(
         default=None, alias="heat_capacity"
+    )
+    heat_capacity_linear_j_per_k2: Annotated[float, Quantity("J/K^2", least=0, most=1e3)] | None = (
+        Field(default=None, alias="heat_capacity_linear")
+    )
+    heat_capacity_cubic_j_per_k4: Annotated[float, Quantity("J/K^4", least=0, most=1e3)] | None = (
+        Field(default=None, alias="heat_capacity_cubic")
     )
     cooling_w_per_k: Annotated[float, Quantity("W/K", above=0, most=1e3)] | None = Field(
         default=None, alias="cooling"
     )
+    cooling_exponent: Annotated[float, Quantity("1", least=0, most=6)] | None = None
+    cooling_reference_k: Kelvin | None = Field(default=None, alias="cooling_reference")
     heater_max_w: Watt | None = Field(default=None, alias="heater_max")
+    heater_ranges_w: (
+        Annotated[
+            list[Annotated[float, Quantity("W", above=0, most=1e3)]],
+            Field(min_length=1, max_length=20),
+        ]
+        | None
+    ) = Field(default=None, alias="heater_ranges")
     response_s: Seconds | None = Field(default=None, alias="response")
+    loop_on_thermometer: bool | None = None
+    loop_period_s: Annotated[float, Quantity("s", least=0.01, most=10)] | None = Field(
+        default=None, alias="loop_period"
+    )
+    curie_j_k_per_t2: Annotated[float, Quantity("J*K/T^2", least=0, most=1e3)] | None = Field(
+        default=None, alias="curie"
+    )
+    sample_conductance_w_per_k: Annotated[float, Quantity("W/K", least=0, most=1e3)] | None = Field(
+        default=None, alias="sample_conductance"
+    )
+    thermometer_error_per_t2: Annotated[float, Quantity("1/T^2", least=-4e-4, most=1e-2)] | None = (
+        Field(default=None, alias="thermometer_error_quadratic")
+    )
+    thermometer_error: (
+        Annotated[list[ThermometerError], Field(min_length=1, max_length=100)] | None
+    ) = None
+    bath_pressure_pa: Annotated[float, Quantity("Pa", least=115, most=1.96e5)] | None = Field(
+        default=None, alias="bath_pressure"
+    )
+    charge_j: Annotated[float, Quantity("J", above=0, most=1e7)] | None = Field(
+        default=None, alias="charge"
+    )
+    charge_leak_w: Watt | None = Field(default=None, alias="charge_leak")
+    spent_base_k: Kelvin | None = Field(default=None, alias="spent_base")
+    recharge_s: Annotated[float, Quantity("s", above=0, most=1e6)] | None = Field(
+        default=None, alias="recharge_time"
+    )
     eddy_w_s2_per_t2: Losses | None = Field(default=None, alias="eddy_coefficient")
     sample_lag_s: Seconds | None = Field(default=None, alias="sample_lag")
     thermometer_lag_s: Seconds | None = Field(default=None, alias="thermometer_lag")
     noise_k: Annotated[float, Quantity("K", least=0, most=10)] | None = Field(
         default=None, alias="noise"
     )
+
+    def given(self) -> dict[str, Any]:
+        values = super().given()
+        if self.heater_ranges_w is not None:
+            values["heater_ranges_w"] = tuple(self.heater_ranges_w)
+        if self.thermometer_error is not None:
+            table = self.thermometer_error
+            values["thermometer_error"] = tuple((one.field_t, one.relative) for one in table)
+        return values
 
 
 class HeliumPart(Part):

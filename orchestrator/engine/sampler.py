@@ -22,9 +22,6 @@ class Sampler:
         The instruments, and the columns that they fill.
     interval_s : float
         From one reading to the next.
-    parallel : bool
-        Poll all instruments at once, each by its own link; False one after the other, for
-        rehearsals on a jumping clock, where an exchange takes no time.
     clock, wall : Callable[[], float]
         The night's clock, and the wall time in seconds since 1970.
     on_reading : Callable[[Reading], None]
@@ -39,7 +36,6 @@ class Sampler:
         sentinel: Sentinel,
         *,
         interval_s: float,
-        parallel: bool,
         clock: Callable[[], float],
         wall: Callable[[], float],
         on_reading: Callable[[Reading], None],
@@ -49,7 +45,6 @@ class Sampler:
         self._ledger = ledger
         self._sentinel = sentinel
         self._interval_s = interval_s
-        self._parallel = parallel
         self._clock = clock
         self._wall = wall
         self._on_reading = on_reading
@@ -85,7 +80,7 @@ class Sampler:
     async def sample(self) -> None:
         """Take one reading and hand it on."""
         asked_s, unix_s = self._clock(), self._wall()
-        answers = await (self._poll_together() if self._parallel else self._poll_in_turn())
+        answers = await self._poll()
         values, taken, asked = dict(self._nothing), {}, {}
         for instrument, (answer_asked_s, taken_s, answer) in answers.items():
             asked[instrument], taken[instrument] = answer_asked_s, taken_s
@@ -105,16 +100,8 @@ class Sampler:
         values = await self._bench.read(instrument)
         return asked_s, self._clock(), values
 
-    async def _poll_in_turn(self) -> dict[str, Answer]:
-        answers = {}
-        for instrument in self._bench.instruments:
-            try:
-                answers[instrument] = await self._read(instrument)
-            except Exception as error:  # absent from this reading; its age is the sentinel's matter
-                self.last_errors[instrument] = str(error)
-        return answers
-
-    async def _poll_together(self) -> dict[str, Answer]:
+    async def _poll(self) -> dict[str, Answer]:
+        """All instruments at once; who fails is absent, and its age is the sentinel's matter."""
         tasks = dict(self._late)
         for instrument in self._bench.instruments:
             if instrument not in tasks:

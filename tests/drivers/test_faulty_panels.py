@@ -1,7 +1,7 @@
 """Drivers against front panels that lie, freeze, fall silent or refuse, inside pyvisa-sim."""
 
 import asyncio
-from collections.abc import Awaitable, Callable
+from collections.abc import Awaitable, Callable, Coroutine
 
 import pytest
 
@@ -10,6 +10,7 @@ from drivers.errors import BadReply, LinkError, Timeout, WrongInstrument
 from drivers.magnet_supply import ScpiMagnetSupply
 from drivers.opening import open_gauge, open_lock_in, open_magnet_supply
 from drivers.speaking import Lacking
+from orchestrator.engine.clock import JumpingLoop
 from simulators.faults import FaultyPanel
 from simulators.panels import panels
 from simulators.visa import attach
@@ -38,13 +39,19 @@ async def supply(address: str = SOCKET) -> tuple[FaultyPanel, ScpiMagnetSupply]:
     return panel, magnet
 
 
+def rehearsed(body: Coroutine[None, None, None]) -> None:
+    """Run on a clock that jumps, so that timeouts take no time of the wall."""
+    with asyncio.Runner(loop_factory=JumpingLoop) as runner:
+        runner.run(body)
+
+
 def run(body: Callable[[FaultyPanel, ScpiMagnetSupply], Awaitable[None]], address: str) -> None:
     async def whole() -> None:
         panel, magnet = await supply(address)
         await body(panel, magnet)
         await magnet.close()
 
-    asyncio.run(whole())
+    rehearsed(whole())
 
 
 @everywhere
@@ -79,6 +86,7 @@ def test_silence_is_a_timeout_and_life_goes_on_afterwards(address: str) -> None:
         with pytest.raises(Timeout, match="magnet at"):
             await magnet.read()
         assert magnet.link.counters.timeouts == 3
+        assert asyncio.get_running_loop().time() >= 6.0  # each waited its 2 s, on the night's clock
         panel.silent = False
         assert (await magnet.read()).field_t == 0.0
 
@@ -191,7 +199,7 @@ def test_wrong_instrument_is_refused_by_serial_number_and_by_kind() -> None:
         with pytest.raises(ValueError, match="of a gauge, and a magnet is needed"):
             await open_magnet_supply(manager, GPIB, gauge, name="magnet", inline=True)
 
-    asyncio.run(body())
+    rehearsed(body())
 
 
 def test_setting_that_the_dialect_lacks_says_so() -> None:
@@ -210,7 +218,7 @@ def test_setting_that_the_dialect_lacks_says_so() -> None:
             await lock_in.write_filter_order(5)
         await lock_in.close()
 
-    asyncio.run(body())
+    rehearsed(body())
 
 
 def test_rehearsal_costs_no_time_of_the_loop() -> None:

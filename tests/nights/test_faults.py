@@ -264,12 +264,12 @@ def test_a_fault_of_the_program_itself_parks_the_rig(tmp_path: Path) -> None:
 
 def test_a_sampler_that_fails_is_started_anew_to_park(tmp_path: Path) -> None:
     def fail_later(world, panels, loop):  # type: ignore[no-untyped-def]
-        loop.call_at(RAMPING_S, lambda: setattr(Sampler, "_poll_in_turn", broken_once))
+        loop.call_at(RAMPING_S, lambda: setattr(Sampler, "_poll", broken_once))
 
-    usual = Sampler._poll_in_turn
+    usual = Sampler._poll
 
     async def broken_once(self: Sampler) -> Any:
-        Sampler._poll_in_turn = usual  # type: ignore[method-assign]
+        Sampler._poll = usual  # type: ignore[method-assign]
         raise RuntimeError("the poll stumbled")
 
     night = rehearse(tmp_path, faults=fail_later)

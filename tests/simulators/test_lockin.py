@@ -11,8 +11,8 @@ from scipy import signal, stats
 from orchestrator.physics.lifshitz_kosevich import dingle_factor, spin_factor, thermal_factor
 from simulators import lowpass
 from simulators.lockin import LockIn, LockInParameters
+from simulators.lockin_panel import LockInPanel
 from simulators.noise import NoiseSource
-from simulators.panels import LockInPanel
 from simulators.sample import SampleParameters
 from simulators.world import World
 from tests.simulators.rigs import Clock, quiet, sweep

@@ -4,7 +4,7 @@ from dataclasses import replace
 
 import pytest
 
-from simulators.panels import MagnetPanel
+from simulators.magnet_panel import MagnetPanel
 from simulators.world import World, WorldParameters
 from tests.simulators.rigs import Clock, quiet, sweep, with_coil
 

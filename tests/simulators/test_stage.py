@@ -6,7 +6,7 @@ from dataclasses import replace
 import pytest
 
 from simulators.cryostat import StageParameters
-from simulators.panels import StagePanel
+from simulators.stage_panel import StagePanel
 from simulators.world import World
 from tests.simulators.rigs import Clock, quiet, sweep
 

@@ -5,6 +5,7 @@ import socket
 import struct
 import time
 
+import numpy as np
 import pytest
 import pyvisa
 from hypothesis import given, settings
@@ -171,6 +172,14 @@ async def body_garbage_then_life() -> None:
     await served.close()
 
 
+async def body_blocks() -> None:
+    served = await serve(rig())
+    block = b'SOUR:FIEL:TARG #212ab\n;"#9\n,*RST\nSYST:ERR?\nSOUR:FIEL:LIM?\n'
+    answers = await asked(served, "magnet", block, lines=2)
+    assert answers == [b'-168,"Block data not allowed"\n', b"1.200000000E+01\n"]
+    await served.close()
+
+
 async def body_abrupt_close() -> None:
     served = await serve(rig())
     for _ in range(5):
@@ -200,6 +209,10 @@ def test_partial_lines_are_put_together() -> None:
 
 def test_a_mebibyte_of_garbage_is_one_error_and_the_panel_lives_on() -> None:
     asyncio.run(body_garbage_then_life())
+
+
+def test_a_line_end_inside_a_block_belongs_to_the_block() -> None:
+    asyncio.run(body_blocks())
 
 
 def test_abrupt_closes_are_survived() -> None:
@@ -244,6 +257,25 @@ def test_no_text_makes_a_panel_raise_or_answer_in_other_than_ascii(line: str) ->
             assert not entry.startswith("-310"), line
             if entry.startswith("0,"):
                 break
+        assert panel.execute("*OPC?") == "1"
+
+
+def test_ten_thousand_lines_of_random_bytes_are_command_errors_and_leave_each_panel_alive() -> None:
+    """Event status register: bit 5 for -1xx, bit 3 for -363, nothing else (IEEE 488.2)."""
+    random = np.random.default_rng(20261201)
+    every = rig()
+    for number in range(10_000):
+        panel = list(every.values())[number % len(every)]
+        length = int(random.integers(1, 60)) if number % 100 else LINE_MAX + 1
+        data = random.integers(0, 256, length, dtype=np.uint8).tobytes().replace(b"\n", b"")
+        panel.execute("*CLS")
+        assert LineAssembler(panel).feed(data + b"\n") == []
+        event, entry = str(panel.execute("*ESR?;:SYST:ERR?")).split(";", 1)
+        code = int(entry.partition(",")[0])
+        if code == 0:
+            assert not data.strip(bytes(range(33))), data
+        else:
+            assert (-199 <= code <= -100 and event == "32") or (code, event) == (-363, "8"), data
         assert panel.execute("*OPC?") == "1"
 
 

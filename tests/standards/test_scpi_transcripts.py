@@ -9,7 +9,8 @@ import pytest
 
 from simulators.front_panel import LINE_MAX, FrontPanel
 from simulators.lockin import LockInParameters
-from simulators.panels import LockInPanel, MagnetPanel
+from simulators.lockin_panel import LockInPanel
+from simulators.magnet_panel import MagnetPanel
 from simulators.status import QUEUE_LENGTH
 from simulators.world import World, WorldParameters
 
@@ -81,6 +82,8 @@ def test_header_short_long_any_case_and_root(magnet: MagnetPanel, line: str) -> 
     assert errors(magnet) == []
 
 
+IDENTITY = MagnetPanel(World(WorldParameters(), lambda: 0.0)).identity
+
 TRANSCRIPTS: list[tuple[str, str | None, list[int]]] = [
     # compound messages: answers of one message in one line, joined by semicolons
     ("*OPC?;*OPC?", "1;1", []),
@@ -93,6 +96,8 @@ TRANSCRIPTS: list[tuple[str, str | None, list[int]]] = [
     ("*OPC?;", "1", []),
     ("", None, []),
     ("   ", None, []),
+    # white space is ASCII 0 to 9 and 11 to 32: IEEE 488.2 7.4.1.2 (from memory)
+    ("\x00\x07SOUR:FIEL:TARG\x1f3\x09;\x08TARG?", "3.000000000E+00", []),
     # numbers and units
     ("SOUR:FIEL:TARG 1500 MT;TARG?", "1.500000000E+00", []),
     ("SOUR:FIEL:TARG 1.5T;TARG?", "1.500000000E+00", []),
@@ -126,7 +131,8 @@ TRANSCRIPTS: list[tuple[str, str | None, list[int]]] = [
     ("SOUR::FIEL:TARG 1", None, [-102]),
     ("*OPC?;;*OPC?", "1", [-102]),
     ("?", None, [-102]),
-    ("\x07*IDN?", None, [-101]),
+    ("\x7f*IDN?", None, [-101]),
+    ("\xa0*IDN?", None, [-101]),
     ("\xe9t\xe9", None, [-101]),
     ("SOUR:FIEL:TARG 1.2.3", None, [-121]),
     ("SOUR:FIEL:TARG #HXYZ", None, [-121]),
@@ -139,6 +145,13 @@ TRANSCRIPTS: list[tuple[str, str | None, list[int]]] = [
     ("SOUR:FIEL:RAMP:STAT MAYBE", None, [-141]),
     ('SOUR:FIEL:TARG "1"', None, [-158]),
     ('SOUR:FIEL:TARG "1', None, [-151]),
+    # blocks: what stands inside is no separator, and no parameter here takes one
+    ("SOUR:FIEL:TARG #15a;b,c", None, [-168]),
+    ("SOUR:FIEL:TARG #13a;b;TARG?", None, [-168]),
+    ("SOUR:FIEL:TARG #19abc", None, [-161]),
+    # *IDN? answers arbitrary text, so nothing may be asked behind it
+    ("*OPC?;*IDN?;*OPC?", f"1;{IDENTITY}", [-440]),
+    ("*IDN?;*CLS", IDENTITY, []),
     # execution errors: only the command itself is lost
     ("SOUR:FIEL:TARG 12.001;TARG?", "0.000000000E+00", [-222]),
     ("SOUR:FIEL:TARG -12.001", None, [-222]),
@@ -181,6 +194,24 @@ def test_error_class_sets_its_event_bit(magnet: MagnetPanel, line: str, bit: int
     magnet.execute(line)
     assert magnet.execute("*ESR?") == str(bit)
     assert magnet.execute("*ESR?") == "0"
+
+
+def test_a_failed_self_test_is_a_device_error_with_its_number() -> None:
+    world = World(WorldParameters(), lambda: 0.0)
+    panel = MagnetPanel(world)
+    assert panel.execute("*CLS;*TST?;*ESR?") == "0;0"
+    world.quench()
+    assert panel.execute("*TST?;*ESR?;:SYST:ERR?") == '1;8;-330,"Self-test failed"'
+
+
+def test_a_key_pressed_at_the_instrument_sets_the_user_request_bit(magnet: MagnetPanel) -> None:
+    magnet.status.user_request()
+    assert magnet.execute("*ESR?;*ESR?") == "64;0"
+
+
+def test_query_errors_set_bit_2(magnet: MagnetPanel) -> None:
+    magnet.execute("*IDN?;*OPC?")
+    assert magnet.execute("*ESR?") == "4"
 
 
 def test_power_on_bit_is_set_once() -> None:

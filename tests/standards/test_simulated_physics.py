@@ -7,8 +7,9 @@ import numpy as np
 import pytest
 from scipy import constants, integrate
 
+from simulators.gauge_panel import GaugePanel
 from simulators.helium import LATENT_J_PER_LITRE, HeliumBath, HeliumParameters
-from simulators.panels import GaugePanel, MagnetPanel
+from simulators.magnet_panel import MagnetPanel
 from simulators.sample import Orbit, Sample, SampleParameters
 from simulators.world import World
 from tests.simulators.rigs import Clock, quiet, sweep, with_coil
