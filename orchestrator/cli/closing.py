@@ -11,7 +11,9 @@ from orchestrator.engine.night import NightDone
 from orchestrator.report.summary import closing_table, summarise
 
 
-def close_night(folder: Path, done: NightDone, *, wall_s: float, as_json: bool) -> None:
+def close_night(
+    folder: Path, done: NightDone, *, wall_s: float, as_json: bool, contact: str = ""
+) -> None:
     """Print what the night came to. Raises Failed with exit code 3 if it ended early."""
     summary = summarise(
         folder,
@@ -25,6 +27,10 @@ def close_night(folder: Path, done: NightDone, *, wall_s: float, as_json: bool) 
     else:
         Console().print(closing_table(summary))
     if done.outcome != "done" or done.parked != "parked":
-        raise Failed(
-            f"the night ended early ({done.outcome}); the rig: {done.parked}", NIGHT_ENDED_EARLY
-        )
+        rest = "the rig is parked" if done.parked == "parked" else _not_at_rest(done, contact)
+        raise Failed(f"the night ended early ({done.outcome}); {rest}", NIGHT_ENDED_EARLY)
+
+
+def _not_at_rest(done: NightDone, contact: str) -> str:
+    whom = f"; call {contact}" if contact else ""
+    return f"THE RIG IS NOT AT REST: {done.parked}{whom}"

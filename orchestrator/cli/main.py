@@ -12,6 +12,7 @@ from orchestrator.cli.new import new
 from orchestrator.cli.rehearse import rehearse
 from orchestrator.cli.run import run
 from orchestrator.cli.simulate import simulate
+from orchestrator.cli.telling import tell
 from orchestrator.cli.watch import watch
 
 app = typer.Typer(
@@ -41,7 +42,7 @@ def main() -> None:
     try:
         app()
     except Failed as failure:
-        print(f"nightfield: {failure}", file=sys.stderr)
+        tell(f"nightfield: {failure}")
         sys.exit(failure.code)
 
 

@@ -1,6 +1,5 @@
 """``nightfield run``: a live night on the rig's own instruments."""
 
-import sys
 import time
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated
@@ -9,6 +8,7 @@ import typer
 
 from orchestrator.cli.failing import Failed, input_errors
 from orchestrator.cli.options import AsJson, NightsFolder
+from orchestrator.cli.telling import tell
 
 if TYPE_CHECKING:
     from orchestrator.cli.composition import Files
@@ -39,7 +39,7 @@ def run(
 
         files = load_files(rig, sequence)
         for caution in cautions(files.rig):
-            print(f"- {caution}", file=sys.stderr)
+            tell(f"- {caution}")
         _ask_the_facility(files)
         began_s = time.monotonic()
         folder, done = live_night(
@@ -47,11 +47,17 @@ def run(
             into=into,
             pace=pace,
             quiet=as_json,
-            say=lambda text: print(text, file=sys.stderr, flush=True),
+            say=tell,
         )
         from orchestrator.cli.closing import close_night
 
-        close_night(folder, done, wall_s=time.monotonic() - began_s, as_json=as_json)
+        close_night(
+            folder,
+            done,
+            wall_s=time.monotonic() - began_s,
+            as_json=as_json,
+            contact=files.rig.facility.contact,
+        )
 
 
 def _ask_the_facility(files: "Files") -> None:
@@ -65,7 +71,4 @@ def _ask_the_facility(files: "Files") -> None:
         if not getattr(facility, key).strip():
             place = files.rig_document.where("facility", key)
             raise Failed(f"{place}: no live run without {meaning}")
-    print(
-        f"rules: {facility.rules}\ncall: {facility.contact}\npermission: {facility.permission}",
-        file=sys.stderr,
-    )
+    tell(f"rules: {facility.rules}\ncall: {facility.contact}\npermission: {facility.permission}")

@@ -21,12 +21,16 @@ def build(model: type[Model], document: Document) -> Model:
     Raises
     ------
     ConfigError
-        With the file, line, key, value and allowed range of the first error in the file.
+        With the file, line, key, value and allowed range of the first unknown key in the file,
+        else of the first error.
     """
     try:
         return model.model_validate(document.data)
     except ValidationError as error:
-        found = [_config_error(document, item) for item in error.errors()]
+        # A key that is misspelt is unknown and missing at once: the first tells more.
+        items = error.errors()
+        unknown = [item for item in items if item["type"] == "extra_forbidden"]
+        found = [_config_error(document, item) for item in unknown or items]
         raise min(found, key=lambda one: one.line or 0) from None
 
 

@@ -106,6 +106,7 @@ class Sampler:
         for instrument in self._bench.instruments:
             if instrument not in tasks:
                 tasks[instrument] = asyncio.ensure_future(self._read(instrument))
+        self._late = tasks  # all of them, should this wait be cancelled
         await asyncio.wait(tasks.values(), timeout=_WAIT_SHARE * self._interval_s)
         self._late = {name: task for name, task in tasks.items() if not task.done()}
         answers = {}

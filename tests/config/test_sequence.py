@@ -37,7 +37,7 @@ def test_the_shipped_ladder_is_read_into_si() -> None:
         ("mass = 0.17", "mass = nan", "finite"),
         ("mass = 0.17", 'mass = "0.17"', "plain number"),
         ('window = "2 min"', 'window = "2 T"', r"line 20: step\[1\]\.window ="),
-        ('window = "2 min"', 'windows = "2 min"', r"window"),
+        ('window = "2 min"', 'windows = "2 min"', r"line 20: step\[1\]\.windows.* not a key"),
     ],
 )
 def test_one_message_names_what_is_wrong(tmp_path: Path, old: str, new: str, words: str) -> None:

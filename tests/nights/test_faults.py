@@ -115,6 +115,37 @@ def test_a_write_that_is_ignored_trips_at_the_read_back(tmp_path: Path) -> None:
     assert night.violations == []
 
 
+def make_deaf(names: tuple[str, ...], for_s: float):  # type: ignore[no-untyped-def]
+    def faults(world, panels, loop):  # type: ignore[no-untyped-def]
+        for name in names:
+            loop.call_at(RAMPING_S, setattr, panels[name], "deaf", True)
+            loop.call_at(RAMPING_S + for_s, setattr, panels[name], "deaf", False)
+
+    return faults
+
+
+def test_a_network_that_comes_back_finds_the_night_still_trying_to_park(tmp_path: Path) -> None:
+    night = rehearse(tmp_path, faults=make_deaf(("magnet", "stage"), 300.0))
+    assert night.done.outcome.startswith("stale-")
+    assert night.done.parked == "parked"
+    assert abs(night.world.coil.coil_t) < 1e-3
+    assert not night.world.stage.heater_on
+    assert [one.name for one in night.reader.events() if one.name == "park-again"]
+    assert night.violations == []
+
+
+def test_a_magnet_that_never_answers_again_is_told_after_half_an_hour_and_its_switch_let_alone(
+    tmp_path: Path,
+) -> None:
+    night = rehearse(tmp_path, faults=make_deaf(("magnet",), 1e6))
+    assert "the magnet was not ramped to zero" in night.done.parked
+    assert RAMPING_S + 1800 < night.done.duration_s < RAMPING_S + 2400
+    assert not night.world.stage.heater_on
+    switch = [one for one in night.reader.commands() if one.operation == "switch_heater"]
+    assert [one.value for one in switch] == [1.0]
+    assert night.violations == []
+
+
 def test_low_helium_parks_the_rig(tmp_path: Path) -> None:
     def run_low(world, panels, loop):  # type: ignore[no-untyped-def]
         panels["helium"].replies = {":MEAS:LEV?": "2.0E+01"}
