@@ -108,9 +108,8 @@ def _show(found: dict[str, Any]) -> None:
     else:
         console.print("No oscillation was found above the noise.")
     if hall := found.get("hall"):
-        console.print(
-            f"Hall: density {hall['density_m2']:.5g} m⁻², "
-            f"mobility {hall['mobility_m2_per_vs']:.4g} m²/(V s)"
-        )
+        mobility = hall["mobility_m2_per_vs"]
+        known = "not known without a zero field" if mobility is None else f"{mobility:.4g} m²/(V s)"
+        console.print(f"Hall: density {hall['density_m2']:.5g} m⁻², mobility {known}")
     elif problem := found.get("hall_problem"):
         console.print(f"Hall: {problem}")

@@ -27,6 +27,10 @@ from orchestrator.units import duration_text
 
 Lines = list[Text]
 
+_REHEARSED_S = (
+    10 * 365.25 * 86400
+)  # so old is only a night rehearsed at full speed: it plays in 2000
+
 _STYLES = {
     Level.WELL: "bold black on green",
     Level.OVER: "bold reverse",
@@ -122,7 +126,9 @@ def _head(picture: Picture, now_unix_s: float, width: int) -> Lines:
         age_s = max(0.0, now_unix_s - picture.newest.unix_s)
         old = not picture.outcome and age_s > stale_after_s(picture)
         heard = f"{'LAST READ' if old else 'read'} {duration_text(age_s)} ago"
-        if age_s > 86400:
+        if age_s > _REHEARSED_S:
+            heard = "in a rehearsal's time"
+        elif age_s > 86400:
             heard = f"last read {day(picture.newest.unix_s)}"
     room = max(0, width - len(found.headline) - len(heard) - 6)
     left = f" {found.headline}  {whose if len(whose) <= room else whose[: max(room - 1, 0)] + '…'}"

@@ -117,9 +117,17 @@ def test_a_finished_night_can_be_analysed_again(evening: dict[str, Any]) -> None
     assert found["hall"]["density_m2"] == pytest.approx(5.2e16, rel=0.01)
 
 
+def test_a_finished_night_is_analysed_for_people_too(evening: dict[str, Any]) -> None:
+    shown = nightfield("analyse", evening["night"], place=evening["place"])
+    assert shown.returncode == 0, shown.stderr
+    assert "412.5" in shown.stdout
+    assert "mobility not known without a zero field" in shown.stdout
+
+
 def test_a_finished_night_can_be_looked_at(evening: dict[str, Any]) -> None:
     shown = nightfield("watch", evening["night"], "--once", place=evening["place"]).stdout
     assert "lantern-cellar" in shown
+    assert "in a rehearsal's time" in shown
 
 
 def test_analyse_reads_a_table(tmp_path: Path) -> None:
