@@ -15,7 +15,6 @@ import asyncio
 import contextlib
 import signal
 import sys
-import threading
 from collections.abc import Sequence
 from dataclasses import asdict, dataclass
 from pathlib import Path
@@ -26,6 +25,7 @@ from orchestrator.analysis.gathering import CutSweep, Gathering
 from orchestrator.analysis.hall import analyse_hall
 from orchestrator.analysis.ladder import analyse_ladder
 from orchestrator.analysis.sweeps import AnalysisError
+from orchestrator.children import until_owner_has_gone
 from orchestrator.ledger.reading import NightReader
 from orchestrator.stream.address import AddressError, BrokerAddress
 from orchestrator.stream.messages import EventMessage, Message, ReadingBatch
@@ -219,19 +219,12 @@ async def _serve_until_ended(address: BrokerAddress, rig: str, alone: bool) -> N
     for number in (signal.SIGINT, signal.SIGTERM):
         with contextlib.suppress(NotImplementedError):  # Windows
             loop.add_signal_handler(number, ended.set)
-    if not alone:
-
-        def watch() -> None:
-            while sys.stdin.buffer.read(4096):
-                pass
-            with contextlib.suppress(RuntimeError):
-                loop.call_soon_threadsafe(ended.set)
-
-        threading.Thread(target=watch, daemon=True).start()
     serving = asyncio.create_task(serve(address, rig))
-    ending = asyncio.create_task(ended.wait())
-    await asyncio.wait((serving, ending), return_when=asyncio.FIRST_COMPLETED)
-    for task in (serving, ending):
+    tasks: list[asyncio.Task[Any]] = [serving, asyncio.create_task(ended.wait())]
+    if not alone:
+        tasks.append(asyncio.create_task(until_owner_has_gone()))
+    await asyncio.wait(tasks, return_when=asyncio.FIRST_COMPLETED)
+    for task in tasks:
         task.cancel()
     with contextlib.suppress(asyncio.CancelledError):
         await serving

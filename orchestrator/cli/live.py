@@ -13,12 +13,13 @@ from types import FrameType
 
 from drivers.opening import visa_manager
 from orchestrator.bench import Bench, open_bench
+from orchestrator.children import start_child
 from orchestrator.cli.composition import Files, Simulated, addresses_of, truth_of
 from orchestrator.cli.failing import Failed
 from orchestrator.cli.folders import new_folder
 from orchestrator.cli.nights import Setting, describe, described_as_rehearsal, do_night
 from orchestrator.cli.outlets import BrokerOutlet
-from orchestrator.cli.processes import Beside, end_process, start_module, wait_for_file
+from orchestrator.cli.processes import Beside, end_process, wait_for_file
 from orchestrator.cli.progress import NightProgress
 from orchestrator.config.rig import load_rig
 from orchestrator.engine.clock import PacedLoop
@@ -130,7 +131,7 @@ def rehearse_at_pace(
         world_file.write_text(simulated.document.text, encoding="utf-8")
         arguments = ["simulate", str(rig_file), "--write-rig", str(live_file), "--owned"]
         arguments += ["--world", str(world_file), "--seed", str(seed), "--pace", f"{pace:g}"]
-        simulation = start_module("orchestrator.cli.main", arguments)
+        simulation = start_child("orchestrator.cli.main", arguments)
         try:
             if not wait_for_file(live_file, simulation):
                 raise Failed("the simulated rig did not start", 1)

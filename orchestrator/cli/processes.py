@@ -1,28 +1,17 @@
 """The processes beside a live night, and what keeps them going."""
 
 import subprocess
-import sys
 import threading
 import time
-from collections.abc import Sequence
 from pathlib import Path
 from types import TracebackType
 from typing import IO, Self
 
+from orchestrator.children import start_child
 from orchestrator.stream.broker import BrokerProcess, BrokerStartError, start_broker_process
 
 _LOOK_EVERY_S = 0.5
 _LONGEST_PAUSE_S = 30.0
-
-
-def start_module(module: str, arguments: Sequence[str]) -> subprocess.Popen[bytes]:
-    """Start a module of ours as a process that ends when we do: its input closes."""
-    return subprocess.Popen(
-        [sys.executable, "-m", module, *arguments],
-        stdin=subprocess.PIPE,
-        stdout=subprocess.DEVNULL,
-        stderr=subprocess.DEVNULL,
-    )
 
 
 class Beside:
@@ -48,7 +37,7 @@ class Beside:
         return {"broker": self._broker.pid, "analyst": self._analyst.pid}
 
     def _start_analyst(self) -> subprocess.Popen[bytes]:
-        return start_module(
+        return start_child(
             "orchestrator.analysis.analyst",
             ["--broker", f"127.0.0.1:{self.port}", "--rig", self._rig],
         )

@@ -7,6 +7,7 @@ from typing import Annotated
 
 import typer
 
+from orchestrator.children import until_owner_has_gone
 from orchestrator.cli.failing import Failed, input_errors
 from orchestrator.cli.options import Seed, WorldPath
 
@@ -61,7 +62,7 @@ def simulate(
                     _write(write_rig, text)
                     typer.echo(f"rig file   {write_rig}")
                 typer.echo("serving until Ctrl-C" if not owned else "serving")
-                await (_until_input_closes() if owned else asyncio.Event().wait())
+                await (until_owner_has_gone() if owned else asyncio.Event().wait())
             finally:
                 await served.close()
 
@@ -94,19 +95,3 @@ def _write(path: Path, text: str) -> None:
         temporary.replace(path)
     except OSError as error:
         raise Failed(f"--write-rig {path}: cannot be written: {error.strerror}") from error
-
-
-async def _until_input_closes() -> None:
-    """Wait until standard input closes, which it does when the parent process has gone."""
-    import sys
-    import threading
-
-    closed = asyncio.Event()
-    loop = asyncio.get_running_loop()
-
-    def watch() -> None:
-        sys.stdin.buffer.read()
-        loop.call_soon_threadsafe(closed.set)
-
-    threading.Thread(target=watch, daemon=True).start()
-    await closed.wait()

@@ -5,6 +5,7 @@ request in between. What `Ledger.committed_number` reports, and everything befor
 that returned, is on disk.
 """
 
+import contextlib
 import sqlite3
 from collections.abc import Callable, Mapping, Sequence
 from pathlib import Path
@@ -127,22 +128,19 @@ class Ledger:
             )
         check_channels(channels)
         file = Path(folder) / FILE_NAME
+        if file.exists():
+            raise LedgerError(f"{file} exists already; a night is never written over")
+        # Made under another name first: whoever sees the file sees a whole ledger.
+        part = file.with_name(FILE_NAME + ".part")
         try:
             file.parent.mkdir(parents=True, exist_ok=True)
-            file.touch(exist_ok=False)
-        except FileExistsError:
-            raise LedgerError(f"{file} exists already; a night is never written over") from None
-        except OSError as error:
-            raise LedgerError(f"{file} cannot be made: {error}") from error
-        try:
-            connection = connect_to_write(file, _BUSY_TIMEOUT_S)
-            try:
+            part.touch(exist_ok=False)
+            with contextlib.closing(connect_to_write(part, _BUSY_TIMEOUT_S)) as connection:
                 create_tables(connection, channels)
                 _write_description(connection, description, channels)
-            except BaseException:
-                connection.close()
-                raise
-        except (sqlite3.Error, OverflowError) as error:
+            part.rename(file)
+            connection = connect_to_write(file, _BUSY_TIMEOUT_S)
+        except (sqlite3.Error, OverflowError, OSError) as error:
             raise LedgerError(f"{file} cannot be made: {error}") from error
         return cls(file, connection, channels, commit, clock, wall)
 

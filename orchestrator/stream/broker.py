@@ -18,6 +18,8 @@ from dataclasses import dataclass
 from types import TracebackType
 from typing import Any, Self
 
+from orchestrator.children import start_child, until_owner_has_gone
+
 HOST = "127.0.0.1"
 _READY = "nightfield broker ready on port "
 
@@ -63,16 +65,10 @@ async def serve(port: int, until_stdin_closes: bool) -> None:
     # amqtt has no public way to learn the port chosen for port 0.
     instance = broker._servers["default"].instance
     print(f"{_READY}{next(iter(instance.sockets)).getsockname()[1]}", flush=True)
+    waits: list[asyncio.Future[Any]] = [asyncio.ensure_future(ended.wait())]
     if until_stdin_closes:
-
-        def watch() -> None:
-            while sys.stdin.buffer.read(4096):
-                pass
-            with contextlib.suppress(RuntimeError):
-                loop.call_soon_threadsafe(ended.set)
-
-        threading.Thread(target=watch, daemon=True).start()
-    await ended.wait()
+        waits.append(asyncio.ensure_future(until_owner_has_gone()))
+    await asyncio.wait(waits, return_when=asyncio.FIRST_COMPLETED)
     with contextlib.suppress(TimeoutError):
         await asyncio.wait_for(broker.shutdown(), timeout=2.0)
 
@@ -83,7 +79,7 @@ class BrokerProcess:
 
     port: int
     pid: int
-    process: "subprocess.Popen[str]"
+    process: "subprocess.Popen[bytes]"
 
     def stop(self) -> None:
         """End the broker; safe to call twice."""
@@ -131,17 +127,14 @@ def start_broker_process(port: int = 0, timeout_s: float = 20.0) -> BrokerProces
     BrokerStartError
         It ended or did not say that it is ready; usually the port is taken.
     """
-    process = subprocess.Popen(
-        [sys.executable, "-m", "orchestrator.stream.broker", "--port", str(port), "--owned"],
-        stdin=subprocess.PIPE,
-        stdout=subprocess.PIPE,
-        text=True,
+    process = start_child(
+        "orchestrator.stream.broker", ["--port", str(port), "--owned"], stdout=subprocess.PIPE
     )
     assert process.stdout is not None
     expiry = threading.Timer(timeout_s, process.kill)
     expiry.start()
     try:
-        line = process.stdout.readline()
+        line = process.stdout.readline().decode("utf-8", "replace")
     finally:
         expiry.cancel()
     broker = BrokerProcess(port, process.pid, process)

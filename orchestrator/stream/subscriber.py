@@ -114,7 +114,8 @@ class Subscriber:
                     keepalive=_KEEPALIVE_S,
                     max_queued_incoming_messages=_MOST_INCOMING,
                 ) as client:
-                    for kind in ("reading", "event", "alarm", "finding", "state"):
+                    # The retained state first: it says what is new to who does not want the past.
+                    for kind in ("state", "reading", "event", "alarm", "finding"):
                         await client.subscribe(topic_of(self._rig, kind), qos=1)
                     self._client = client
                     self.counts.connections += 1

@@ -25,7 +25,7 @@ SHORT = (
 )
 
 
-def start(*words: str, place: Path) -> "subprocess.Popen[str]":
+def start(*words: str, place: Path, own_group: bool = False) -> "subprocess.Popen[str]":
     return subprocess.Popen(
         [sys.executable, "-m", "orchestrator.cli.main", *words],
         cwd=place,
@@ -34,6 +34,7 @@ def start(*words: str, place: Path) -> "subprocess.Popen[str]":
         stdout=subprocess.PIPE,
         stderr=subprocess.PIPE,
         text=True,
+        start_new_session=own_group,
     )
 
 
@@ -115,6 +116,21 @@ def test_ctrl_c_parks_the_rig(simulated: Path) -> None:
     assert json.loads(out)["outcome"] == "park"
     with NightReader(file) as reader:
         assert abs(reader.readings()[-1].values["field_t"]) < 1e-3
+
+
+@pytest.mark.skipif(os.name != "posix", reason="a terminal's Ctrl-C is sent in another way")
+def test_ctrl_c_in_a_terminal_leaves_the_processes_beside_the_night_alone(tmp_path: Path) -> None:
+    """A terminal sends the signal to its whole group; the rig must still be there to be parked."""
+    (tmp_path / "tiny.toml").write_text(SHORT, encoding="utf-8")
+    words = ("rehearse", "tiny.toml", "--pace", PACE, "--json")
+    night = start(*words, place=tmp_path, own_group=True)
+    wait_for_step(tmp_path, "sweep-1-approach", night)
+    os.killpg(night.pid, signal.SIGINT)
+    out, error = night.communicate(timeout=120)
+    assert night.returncode == 3, error
+    assert [one["name"] for one in json.loads(out)["trips"]] == ["park"]
+    assert "the rig is parked" in error
+    assert "Fatal" not in error
 
 
 def test_an_instrument_that_does_not_answer_is_told_before_the_night(simulated: Path) -> None:
