@@ -7,9 +7,11 @@ from dataclasses import dataclass, field
 from simulators.coil import Coil, CoilParameters
 from simulators.cryostat import Stage, StageParameters
 from simulators.helium import HeliumBath, HeliumParameters
+from simulators.interference import Interference, Knocks
 from simulators.lockin import LockIn, LockInParameters
+from simulators.lockin_parameters import Surroundings
 from simulators.lowpass import NODES_PER_PIECE
-from simulators.noise import NoiseSource
+from simulators.noise import NoiseSource, johnson_v2_per_hz
 from simulators.sample import FIELD_MIN_T, Sample, SampleParameters
 
 _SEGMENT_MAX_S = 20.0
@@ -39,6 +41,7 @@ class WorldParameters:
     helium: HeliumParameters = field(default_factory=HeliumParameters)
     lock_ins: tuple[LockInParameters, ...] = ()
     gauges: tuple[GaugeParameters, ...] = ()
+    surroundings: Surroundings = field(default_factory=Surroundings)
 
 
 class World:
@@ -61,7 +64,7 @@ class World:
         self.stage = Stage(parameters.stage, self._excitation_w)
         self.sample = Sample(parameters.sample)
         self.helium = HeliumBath(parameters.helium)
-        self.lock_ins = {p.name: LockIn(p, self.noise(p.name)) for p in parameters.lock_ins}
+        self.lock_ins = {p.name: self._lock_in(p) for p in parameters.lock_ins}
         self.gauges = {p.name: p for p in parameters.gauges}
         self._longitudinal = [
             lock_in
@@ -69,12 +72,21 @@ class World:
             if lock_in.parameters.measures == "longitudinal"
         ]
         self._quiet_s = parameters.stage.response_s / 3.0
-        for lock_in in self.lock_ins.values():
-            if lock_in.parameters.measures not in {"longitudinal", "hall"}:
-                raise ValueError(
-                    f"lock-in {lock_in.parameters.name} measures "
-                    f"{lock_in.parameters.measures!r}; allowed are 'longitudinal' and 'hall'"
-                )
+
+    def _lock_in(self, p: LockInParameters) -> LockIn:
+        surroundings = self.parameters.surroundings
+        knocks = None
+        if surroundings.knocks_per_h and (p.knock_v_s or p.knock_step_v):
+            # One stream of instants for all: a knock reaches every lock-in at once.
+            instants, phases = self.noise("knocks"), self.noise(f"{p.name}/knock")
+            knocks = Knocks(surroundings.knocks_per_h, self._time_s, instants, phases)
+        interference = Interference(p, lambda: self._time_s, surroundings, knocks)
+        return LockIn(p, self.noise(p.name), interference, self._johnson_v2_per_hz)
+
+    def _johnson_v2_per_hz(self) -> float:
+        """Density of the sample's own noise: of its resistance along, for either voltage."""
+        ohm = self.sample.background_ohm(self.coil.sample_t)
+        return johnson_v2_per_hz(ohm, self.stage.sample_k)
 
     def noise(self, name: str) -> NoiseSource:
         """The random stream of one instrument."""
