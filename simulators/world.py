@@ -60,7 +60,7 @@ class World:
         self.parameters = parameters
         self._now = now
         self._time_s = now()
-        self.coil = Coil(parameters.coil)
+        self.coil = Coil(parameters.coil, self.noise("magnet/quench").take)
         self.stage = Stage(parameters.stage, self._excitation_w)
         self.sample = Sample(parameters.sample)
         self.helium = HeliumBath(parameters.helium)
@@ -155,23 +155,30 @@ class World:
         """Move everything through a time without events."""
         coil, stage = self.coil, self.stage
         velocity = coil.coil_velocity_t_per_s
-        energy_j = coil.energy_j
         nodes = NODES_PER_PIECE * pieces
-        fields = coil.sample_path_t(duration_s, nodes)
         start_k, start_slope = stage.sample_k, stage.sample_slope_k_per_s
         before_t = coil.coil_t
-        coil.advance(duration_s)
-        if coil.quenched:
+        spent = coil.account.bath_j()
+        fields = coil.advance(duration_s, nodes)
+        if coil.quenched or coil.is_bent:
             velocity = (coil.coil_t - before_t) / duration_s
         stage.advance(duration_s, velocity, before_t)
         self.helium.advance(duration_s, 0.0 if coil.quenched else velocity, coil.heater)
-        if coil.quenched:
-            self.helium.absorb(energy_j - coil.energy_j)
-        elif self.helium.litres == 0.0 and coil.coil_t != 0.0:
+        self.helium.absorb(self._coil_heat_j(duration_s, spent))
+        if not coil.quenched and self.helium.litres == 0.0 and coil.coil_t != 0.0:
             coil.quench()
         if self.lock_ins:
             end = (stage.sample_k, stage.sample_slope_k_per_s)
             self._measure(duration_s, fields, (start_k, start_slope), end, oscillates)
+
+    def _coil_heat_j(self, duration_s: float, before: tuple[float, float]) -> float:
+        """Heat that the bath has taken from the magnet in a time."""
+        direct_j, quench_j = self.coil.account.bath_j()
+        heat = self.coil.heat
+        given_j, let_in_j = heat.advance(duration_s, self.helium.percent)
+        self.coil.account.bare_j += let_in_j
+        at_once_j = heat.absorb(quench_j - before[1]) if quench_j != before[1] else 0.0
+        return direct_j - before[0] + given_j + at_once_j
 
     def _excitation_w(self, field_t: float) -> float:
         """Power that the lock-ins' currents leave in the sample, its oscillations left out."""
