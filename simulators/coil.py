@@ -144,7 +144,7 @@ class Coil:
     def quench(self) -> None:
         """The coil goes normal now: heater off, no ramp, current left to collapse."""
         self.heat.begin_quench(self.energy_j)
-        self.shielding.quench()
+        self.shielding.added_t = 0.0
         self.quenched = True
         self.supply.stop(self.lead_t)
         self.heater = False
@@ -222,18 +222,19 @@ class Coil:
         """Time to the next event."""
         if self.quenched:
             busy = abs(self.coil_t) + abs(self.lead_t) > 1e-9
-            decay = self.parameters.quench_decay_s / 10.0 if busy else math.inf
-            return min(decay, self.heat.cold_in_s())
+            return self.parameters.quench_decay_s / 10.0 if busy else math.inf
         motion = self._motion()
-        horizon = min(self._switch_in_s, motion.holds_s, self.heat.cold_in_s())
+        horizon = min(self._switch_in_s, motion.holds_s)
         if abs(self.coil_t) > _ENERGIZED_T:
             horizon = min(horizon, self._chance_in_s)
         if motion.acceleration:
             # The stage sees a mean rate in each step.
             horizon = min(horizon, 0.25 * abs(self.supply.rate_t_per_s / motion.acceleration))
         velocity = self.coil_velocity_t_per_s
-        if self.warm and self._follow_s and abs(velocity - motion.velocity) > 1e-9 * self._rate_max:
-            horizon = min(horizon, 0.5 * self._follow_s)
+        if self.warm and self._follow_s:
+            away = abs(velocity - self._follow_share * motion.velocity)
+            if away > 1e-6 * self._rate_max:
+                horizon = min(horizon, 0.5 * self._follow_s)
         if velocity:
             horizon = min(horizon, self.shielding.turned_in_s(velocity))
             if self.warm and self.parameters.ramp_quench:
@@ -300,11 +301,12 @@ class Coil:
         start_t, end_t = self.coil_t, coils(duration_s)
         if start_t or end_t or self.lead_t:
             self._book(motion, leads, coils, duration_s)
-        self.shielding.added_t = self.shielding.after(end_t - start_t)
+        self.shielding.added_t = self._shielding_after(end_t - start_t)
         if abs(start_t) > _ENERGIZED_T and not self.quenched:
             self._chance_in_s -= duration_s
         if self.quenched:
-            self.supply.output_t = leads(duration_s)
+            end_t = _gone(end_t)
+            self.supply.output_t = _gone(leads(duration_s))
         else:
             self.supply.advance(motion, duration_s)
         at_leads = self.warm and not self._follow_s and not self.quenched
@@ -350,15 +352,19 @@ class Coil:
     ) -> list[float]:
         """Field of coil and shielding at equal steps of the coming time."""
         step_s = duration_s / points
-        shielding, start_t = self.shielding, self.coil_t
+        start_t = self.coil_t
         if self.parameters.remanence_t:
             fields = (coils(step_s * i) for i in range(points + 1))
-            return [b + shielding.after(b - start_t) for b in fields]
+            return [b + self._shielding_after(b - start_t) for b in fields]
         straight = not self.quenched and not motion.acceleration
         if straight and (not self._follow_s or not self.warm) and not self._decay_per_s:
             rise = motion.velocity * step_s if self.warm else 0.0
             return [start_t + rise * i for i in range(points + 1)]
         return [coils(step_s * i) for i in range(points + 1)]
+
+    def _shielding_after(self, change_t: float) -> float:
+        """Normal metal shields nothing."""
+        return 0.0 if self.quenched else self.shielding.after(change_t)
 
     def _behind(self, source: list[float], step_s: float) -> list[float]:
         """The sample's field behind its lag; the source is straight between the points."""
@@ -408,3 +414,8 @@ class Coil:
         if self.quenched or not self.warm or self._follow_s:
             return 0.0  # the terminal voltage does not ask for it
         return motion.velocity + motion.acceleration * s
+
+
+def _gone(field_t: float) -> float:
+    """What is left of a collapse, and at last nothing."""
+    return field_t if abs(field_t) > 1e-9 else 0.0

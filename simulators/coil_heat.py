@@ -5,8 +5,6 @@ beyond its range: a simplification). A warm coil gives a stated power to the bat
 heated by a stated power and cooled less, in proportion to what is bare.
 """
 
-import math
-
 from simulators.coil_parameters import CoilParameters
 
 _BATH_K = 4.22
@@ -59,7 +57,3 @@ class CoilHeat:
         if self.heat_j < 1e-9:
             self.heat_j = 0.0
         return given, let_in
-
-    def cold_in_s(self) -> float:
-        """Time until a covered coil is cold."""
-        return self.heat_j / self._p.recovery_w if self.heat_j else math.inf

@@ -33,7 +33,3 @@ class Shielding:
         if not self._most_t:
             return 0.0
         return min(self._most_t, max(-self._most_t, self.added_t - self._slope * change_t))
-
-    def quench(self) -> None:
-        """Normal metal shields nothing."""
-        self.added_t = 0.0

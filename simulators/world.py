@@ -224,6 +224,8 @@ class World:
         farthest = abs(self.coil.sample_t) + path_t
         if not path_t or farthest > self.sample.clear_t:
             return True
+        if farthest <= FIELD_MIN_T:
+            return False
         omega = self.sample.slowest_t * path_t / duration_s / farthest**2
         bound = self.sample.oscillation_bound(farthest)
         return any(
