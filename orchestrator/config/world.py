@@ -35,8 +35,8 @@ class AboutWorld(Strict):
     seed: Annotated[int, Field(ge=0, lt=2**63)] = 1
 
 
-class QuenchZone(Strict):
-    """Up to field ``to`` the coil quenches if it is ramped faster than ``rate``."""
+class RateZone(Strict):
+    """Up to field ``to``: ``rate``."""
 
     to_t: Tesla = Field(alias="to")
     rate_t_per_s: Annotated[float, Quantity("T/s", above=0, most=10)] = Field(alias="rate")
@@ -69,13 +69,51 @@ class Coil(Part):
         default=None, alias="field_noise"
     )
     quench_decay_s: Seconds | None = Field(default=None, alias="quench_decay")
-    ramp_quench: list[QuenchZone] | None = None
+    ramp_quench: list[RateZone] | None = None
+    supply_rates: list[RateZone] | None = None
+    slew_t_per_s2: Annotated[float, Quantity("T/s^2", least=0, most=10)] | None = Field(
+        default=None, alias="slew"
+    )
+    joint_resistance_ohm: Annotated[float, Quantity("ohm", least=0, most=1e-3)] | None = Field(
+        default=None, alias="joint_resistance"
+    )
+    switch_resistance_ohm: Annotated[float, Quantity("ohm", least=0, most=1e4)] | None = Field(
+        default=None, alias="switch_resistance"
+    )
+    switch_mismatch_t: Annotated[float, Quantity("T", above=0, most=10)] | None = Field(
+        default=None, alias="switch_mismatch"
+    )
+    remanence_t: Annotated[float, Quantity("T", least=0, most=1)] | None = Field(
+        default=None, alias="remanence"
+    )
+    reversal_t: Annotated[float, Quantity("T", above=0, most=45)] | None = Field(
+        default=None, alias="reversal"
+    )
+    quench_rate_per_h: Annotated[float, Quantity("1/hour", least=0, most=100)] | None = Field(
+        default=None, alias="quench_rate"
+    )
+    quench_voltage_share: Annotated[float, Quantity("1", least=0, most=1)] | None = None
+    heat_capacity_j_per_k4: Annotated[float, Quantity("J/K^4", least=0, most=1e3)] | None = Field(
+        default=None, alias="heat_capacity"
+    )
+    hot_spot_share: Annotated[float, Quantity("1", above=0, most=1)] | None = None
+    recovery_w: Annotated[float, Quantity("W", above=0, most=1e5)] | None = Field(
+        default=None, alias="recovery"
+    )
+    sharing_k: Annotated[float, Quantity("K", least=0, most=100)] | None = Field(
+        default=None, alias="sharing_temperature"
+    )
+    sharing_t: Annotated[float, Quantity("T", above=0, most=100)] | None = Field(
+        default=None, alias="sharing_field"
+    )
+    covered_percent: Percent | None = Field(default=None, alias="covered")
+    bare_w: Watt | None = Field(default=None, alias="bare_heat")
 
     def given(self) -> dict[str, Any]:
         values = super().given()
-        if self.ramp_quench is not None:
-            zones = self.ramp_quench
-            values["ramp_quench"] = tuple((zone.to_t, zone.rate_t_per_s) for zone in zones)
+        for name in ("ramp_quench", "supply_rates"):
+            if (zones := getattr(self, name)) is not None:
+                values[name] = tuple((zone.to_t, zone.rate_t_per_s) for zone in zones)
         return values
 
 
