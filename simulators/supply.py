@@ -10,7 +10,6 @@ from typing import NamedTuple
 from simulators.coil_parameters import CoilParameters
 
 _ARRIVED_T = 1e-9
-_HERE_T = 1e-12  # a target nearer than this needs no ramp
 _ROUNDING = 1e-9
 
 
@@ -47,7 +46,7 @@ class Supply:
         slew = self._p.slew_t_per_s2
         way = self.target_t - self.output_t
         if not slew:
-            if not self.ramping or abs(way) <= _HERE_T:
+            if not self.ramping or way == 0.0:
                 return _REST
             rate = self._rate(most_t_per_s)
             holds = min(abs(way) / rate, self._to_edge_t(math.copysign(1.0, way)) / rate)
