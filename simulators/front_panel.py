@@ -8,8 +8,8 @@ import itertools
 import logging
 import math
 import re
-from collections.abc import Callable, Iterator
-from dataclasses import dataclass
+from collections.abc import Callable, Iterator, Mapping
+from dataclasses import dataclass, field
 from functools import partial
 
 from simulators import syntax
@@ -76,6 +76,8 @@ class Command:
         What answers the query, as text.
     numeric : Numeric
         The number that `set` takes.
+    words : mapping
+        What to call for a word, upper case, in place of a number or boolean.
     """
 
     header: str
@@ -84,6 +86,7 @@ class Command:
     set_boolean: Callable[[bool], None] | None = None
     do: Callable[[], None] | None = None
     numeric: Numeric = Numeric()
+    words: Mapping[str, Callable[[], None]] = field(default_factory=dict)
 
     @property
     def commanded(self) -> bool:
@@ -295,6 +298,8 @@ class FrontPanel:
         if len(unit.parameters) > 1:
             raise Refused(-108, syntax.printable(unit.parameters[1]))
         text = unit.parameters[0]
+        if text.upper() in command.words:
+            return command.words[text.upper()]
         if command.set_boolean:
             value, set_boolean = syntax.boolean(text), command.set_boolean
             return lambda: set_boolean(value)

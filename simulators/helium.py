@@ -5,6 +5,9 @@ from dataclasses import dataclass
 LATENT_J_PER_LITRE = 2564.0
 """Heat that boils one litre at 101325 Pa: 124.67 kg/m3 x 20.56 kJ/kg (CoolProp, Helium)."""
 
+GAS_M3_PER_LITRE = 0.7496
+"""Liquid at 4.2238 K to gas at 293.15 K, both at 101325 Pa (CoolProp, Helium)."""
+
 
 @dataclass(frozen=True, slots=True)
 class HeliumParameters:
@@ -48,6 +51,11 @@ class HeliumBath:
     def percent(self) -> float:
         """Level, percent of the capacity."""
         return 100.0 * self.litres / self.parameters.capacity_l
+
+    @property
+    def gas_m3(self) -> float:
+        """Gas that what has boiled makes at 293.15 K and 101325 Pa."""
+        return self.boiled_l * GAS_M3_PER_LITRE
 
     def absorb(self, energy_j: float) -> None:
         """Boil off what an energy in joules boils, as long as there is liquid."""

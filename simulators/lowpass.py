@@ -17,6 +17,7 @@ from scipy.special import gammainc
 Array = NDArray[np.float64]
 
 NODES_PER_PIECE = 3
+_INSTANT = 1e-12
 
 
 @lru_cache(maxsize=512)
@@ -103,7 +104,14 @@ def noise_step(order: int, step: float) -> tuple[Array, Array]:
             for i in range(order)
         ]
     )
-    if step < 1.0:
+    if step < _INSTANT:
+        # The same to first order, as the powers are too small to divide by.
+        scaled = [
+            [0.5 * math.comb(i + j, i) / math.factorial(i + j + 1) for j in range(order)]
+            for i in range(order)
+        ]
+        root = cholesky(np.array(scaled), lower=True) * scale[:, None]
+    elif step < 1.0:
         root = cholesky(covariance / np.outer(scale, scale), lower=True) * scale[:, None]
     else:
         root = cholesky(covariance, lower=True)
@@ -113,3 +121,25 @@ def noise_step(order: int, step: float) -> tuple[Array, Array]:
 def stationary_noise(order: int) -> Array:
     """Cholesky factor of the state's covariance after a long time, scaled as in `noise_step`."""
     return noise_step(order, 200.0)[1]
+
+
+def decayed(state: list[complex], step: float) -> list[complex]:
+    """State of the poles after a time in which nothing comes in.
+
+    Parameters
+    ----------
+    state : list of complex
+        One value for each pole, the output last.
+    step : float
+        Time over tau.
+
+    Returns
+    -------
+    list of complex
+        ``sum_j exp(-step) step^(i-j) / (i-j)! state[j]``, pole by pole.
+    """
+    weight, weights = math.exp(-step), []
+    for k in range(len(state)):
+        weights.append(weight)
+        weight *= step / (k + 1)
+    return [sum(weights[i - j] * state[j] for j in range(i + 1)) for i in range(len(state))]

@@ -37,6 +37,7 @@ class MagnetPanel(FrontPanel):
                 "SOURce:FIELd:RATE",
                 get=lambda: nr3(coil.rate_t_per_s), set=self._set_rate, numeric=rate,
             ),
+            Command("SOURce:FIELd:RATE:TABLe", get=self._rate_table),
             Command("SOURce:FIELd:LIMit", get=lambda: nr3(p.field_max_t)),
             Command("SOURce:FIELd:RAMP:STATe", get=self._ramping, set_boolean=self._set_ramping),
             Command("OUTPut:SWITch:HEATer", get=self._heater, set_boolean=self._set_heater),
@@ -44,6 +45,7 @@ class MagnetPanel(FrontPanel):
             Command("MEASure:FIELd", get=self._field),
             Command("MEASure:CURRent", get=self._current),
             Command("MEASure:VOLTage", get=self._voltage),
+            Command("MEASure:COIL:TEMPerature", get=self._coil_temperature),
         ]  # fmt: skip
 
     def pending(self) -> bool:
@@ -116,6 +118,16 @@ class MagnetPanel(FrontPanel):
     def _persistent(self) -> str:
         self._world.advance()
         return nr3(self._coil.persistent_t)
+
+    def _rate_table(self) -> str:
+        """Pairs of largest field and rate; a supply without a table has one zone."""
+        p = self._coil.parameters
+        zones = p.supply_rates or ((p.field_max_t, math.inf),)
+        return ",".join(f"{nr3(up_to)},{nr3(rate)}" for up_to, rate in zones)
+
+    def _coil_temperature(self) -> str:
+        self._world.advance()
+        return nr3(self._coil.heat.coil_k)
 
     def _field(self) -> str:
         self._world.advance()

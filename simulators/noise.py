@@ -1,11 +1,25 @@
-"""Seeded noise: a random stream per instrument, drawn in batches as single draws are slow."""
+"""Seeded noise: a random stream per instrument, drawn in batches as single draws are slow.
+
+And the densities of noise: Johnson's, Nyquist, Phys. Rev. 32, 110 (1928), and 1/f.
+"""
 
 import zlib
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy import constants
 
 _BATCH = 4096
+
+
+def johnson_v2_per_hz(resistance_ohm: float, temperature_k: float) -> float:
+    """4 k T R, one-sided density of the noise of a resistance (Nyquist 1928), V^2/Hz."""
+    return 4.0 * constants.k * temperature_k * resistance_ohm
+
+
+def flicker(corner_hz: float, frequency_hz: float) -> float:
+    """Power density at a frequency over the white one, 1 + corner / f."""
+    return 1.0 + corner_hz / frequency_hz
 
 
 class NoiseSource:

@@ -35,7 +35,8 @@ def suffixes(unit: str) -> dict[str, float]:
     Returns
     -------
     dict
-        Upper-case suffix to factor. In ``HZ``, ``M`` is mega (IEEE 488.2, from memory).
+        Upper-case suffix to factor. In ``HZ``, ``M`` is mega (IEEE 488.2, from memory); an angle
+        in ``RAD`` may be in ``DEG``.
     """
     if not unit:
         return {}
@@ -43,6 +44,8 @@ def suffixes(unit: str) -> dict[str, float]:
     scaled = {multiplier + base: factor for multiplier, factor in _MULTIPLIERS.items()}
     if base == "HZ":
         scaled["MHZ"] = 1e6
+    if base == "RAD":
+        scaled["DEG"] = math.pi / 180
     if not per:
         return scaled
     return {
@@ -179,13 +182,21 @@ def number(text: str, factors: dict[str, float]) -> float:
         if len(exponent.lstrip("+-0")) > 5 or abs(int(exponent)) > 32000:
             raise Refused(-123)
         value = float(f"{match[1]}e{exponent}")
-        return value * _factor(text[match.end() :].strip(WHITE), factors)
+        return _scaled(value, _factor(text[match.end() :].strip(WHITE), factors))
     if based := _BASED.fullmatch(text):
         digits = next(g for g in based.groups() if g)
         if len(digits) > 255:
             raise Refused(-124)
         return float(int(digits, {"H": 16, "Q": 8, "B": 2}[text[1].upper()]))
     raise not_expected(text, numeric=True)
+
+
+def _scaled(value: float, factor: float) -> float:
+    """Value times factor; 10 UV is 1e-5 to the last bit, as a small factor is divided by."""
+    inverse = round(1.0 / factor)
+    return (
+        value / inverse if inverse > 1 and math.isclose(inverse * factor, 1.0) else value * factor
+    )
 
 
 def _factor(suffix: str, factors: dict[str, float]) -> float:

@@ -7,9 +7,11 @@ from dataclasses import dataclass, field
 from simulators.coil import Coil, CoilParameters
 from simulators.cryostat import Stage, StageParameters
 from simulators.helium import HeliumBath, HeliumParameters
+from simulators.interference import Interference, Knocks
 from simulators.lockin import LockIn, LockInParameters
+from simulators.lockin_parameters import Surroundings
 from simulators.lowpass import NODES_PER_PIECE
-from simulators.noise import NoiseSource
+from simulators.noise import NoiseSource, johnson_v2_per_hz
 from simulators.sample import FIELD_MIN_T, Sample, SampleParameters
 
 _SEGMENT_MAX_S = 20.0
@@ -39,6 +41,7 @@ class WorldParameters:
     helium: HeliumParameters = field(default_factory=HeliumParameters)
     lock_ins: tuple[LockInParameters, ...] = ()
     gauges: tuple[GaugeParameters, ...] = ()
+    surroundings: Surroundings = field(default_factory=Surroundings)
 
 
 class World:
@@ -57,11 +60,11 @@ class World:
         self.parameters = parameters
         self._now = now
         self._time_s = now()
-        self.coil = Coil(parameters.coil)
+        self.coil = Coil(parameters.coil, self.noise("magnet/quench").take)
         self.stage = Stage(parameters.stage, self._excitation_w)
         self.sample = Sample(parameters.sample)
         self.helium = HeliumBath(parameters.helium)
-        self.lock_ins = {p.name: LockIn(p, self.noise(p.name)) for p in parameters.lock_ins}
+        self.lock_ins = {p.name: self._lock_in(p) for p in parameters.lock_ins}
         self.gauges = {p.name: p for p in parameters.gauges}
         self._longitudinal = [
             lock_in
@@ -69,12 +72,21 @@ class World:
             if lock_in.parameters.measures == "longitudinal"
         ]
         self._quiet_s = parameters.stage.response_s / 3.0
-        for lock_in in self.lock_ins.values():
-            if lock_in.parameters.measures not in {"longitudinal", "hall"}:
-                raise ValueError(
-                    f"lock-in {lock_in.parameters.name} measures "
-                    f"{lock_in.parameters.measures!r}; allowed are 'longitudinal' and 'hall'"
-                )
+
+    def _lock_in(self, p: LockInParameters) -> LockIn:
+        surroundings = self.parameters.surroundings
+        knocks = None
+        if surroundings.knocks_per_h and (p.knock_v_s or p.knock_step_v):
+            # One stream of instants for all: a knock reaches every lock-in at once.
+            instants, phases = self.noise("knocks"), self.noise(f"{p.name}/knock")
+            knocks = Knocks(surroundings.knocks_per_h, self._time_s, instants, phases)
+        interference = Interference(p, lambda: self._time_s, surroundings, knocks)
+        return LockIn(p, self.noise(p.name), interference, self._johnson_v2_per_hz)
+
+    def _johnson_v2_per_hz(self) -> float:
+        """Density of the sample's own noise: of its resistance along, for either voltage."""
+        ohm = self.sample.background_ohm(self.coil.sample_t)
+        return johnson_v2_per_hz(ohm, self.stage.sample_k)
 
     def noise(self, name: str) -> NoiseSource:
         """The random stream of one instrument."""
@@ -143,23 +155,30 @@ class World:
         """Move everything through a time without events."""
         coil, stage = self.coil, self.stage
         velocity = coil.coil_velocity_t_per_s
-        energy_j = coil.energy_j
         nodes = NODES_PER_PIECE * pieces
-        fields = coil.sample_path_t(duration_s, nodes)
         start_k, start_slope = stage.sample_k, stage.sample_slope_k_per_s
         before_t = coil.coil_t
-        coil.advance(duration_s)
-        if coil.quenched:
+        spent = coil.account.bath_j()
+        fields = coil.advance(duration_s, nodes)
+        if coil.quenched or coil.is_bent:
             velocity = (coil.coil_t - before_t) / duration_s
         stage.advance(duration_s, velocity, before_t)
         self.helium.advance(duration_s, 0.0 if coil.quenched else velocity, coil.heater)
-        if coil.quenched:
-            self.helium.absorb(energy_j - coil.energy_j)
-        elif self.helium.litres == 0.0 and coil.coil_t != 0.0:
+        self.helium.absorb(self._coil_heat_j(duration_s, spent))
+        if not coil.quenched and self.helium.litres == 0.0 and coil.coil_t != 0.0:
             coil.quench()
         if self.lock_ins:
             end = (stage.sample_k, stage.sample_slope_k_per_s)
             self._measure(duration_s, fields, (start_k, start_slope), end, oscillates)
+
+    def _coil_heat_j(self, duration_s: float, before: tuple[float, float]) -> float:
+        """Heat that the bath has taken from the magnet in a time."""
+        direct_j, quench_j = self.coil.account.bath_j()
+        heat = self.coil.heat
+        given_j, let_in_j = heat.advance(duration_s, self.helium.percent)
+        self.coil.account.bare_j += let_in_j
+        at_once_j = heat.absorb(quench_j - before[1]) if quench_j != before[1] else 0.0
+        return direct_j - before[0] + given_j + at_once_j
 
     def _excitation_w(self, field_t: float) -> float:
         """Power that the lock-ins' currents leave in the sample, its oscillations left out."""
@@ -205,6 +224,8 @@ class World:
         farthest = abs(self.coil.sample_t) + path_t
         if not path_t or farthest > self.sample.clear_t:
             return True
+        if farthest <= FIELD_MIN_T:
+            return False
         omega = self.sample.slowest_t * path_t / duration_s / farthest**2
         bound = self.sample.oscillation_bound(farthest)
         return any(

@@ -12,7 +12,7 @@ from orchestrator.config.world import WorldFile, load_world
 from simulators.coil import CoilParameters
 from simulators.cryostat import StageParameters
 from simulators.helium import HeliumParameters
-from simulators.lockin import LockInParameters
+from simulators.lockin_parameters import LockInParameters, Surroundings
 from simulators.sample import Orbit, SampleParameters
 from simulators.world import GaugeParameters, WorldParameters
 
@@ -65,6 +65,10 @@ def load_simulated(world: Path | None, rig: Rig) -> Simulated:
                 value=f'"{lock_in.name}"',
                 allowed=", ".join(sorted(names)),
             )
+        try:
+            LockInParameters(**lock_in.given())
+        except ValueError as error:
+            raise document.refuse(("lockin", index), str(error)) from None
     try:
         _stage_parameters(rig, model)
     except ValueError as error:
@@ -110,6 +114,7 @@ def world_parameters(rig: Rig, world: WorldFile, seed: int) -> WorldParameters:
         helium=HeliumParameters(**world.helium.given()),
         lock_ins=lock_ins,
         gauges=tuple(GaugeParameters(one.name) for one in rig.gauges),
+        surroundings=Surroundings(**world.surroundings.given()),
     )
 
 

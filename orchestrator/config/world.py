@@ -24,6 +24,7 @@ Watt = Annotated[float, Quantity("W", least=0, most=1e3)]
 Percent = Annotated[float, Quantity("percent", least=0, most=100)]
 PerTesla = Annotated[float, Quantity("1/T", least=-10, most=10)]
 PerTesla2 = Annotated[float, Quantity("1/T^2", least=-10, most=10)]
+Radian = Annotated[float, Quantity("rad", least=-6.2832, most=6.2832)]
 Losses = Annotated[float, Quantity("W*s^2/T^2", least=0, most=1e6)]
 
 
@@ -34,8 +35,8 @@ class AboutWorld(Strict):
     seed: Annotated[int, Field(ge=0, lt=2**63)] = 1
 
 
-class QuenchZone(Strict):
-    """Up to field ``to`` the coil quenches if it is ramped faster than ``rate``."""
+class RateZone(Strict):
+    """Up to field ``to``: ``rate``."""
 
     to_t: Tesla = Field(alias="to")
     rate_t_per_s: Annotated[float, Quantity("T/s", above=0, most=10)] = Field(alias="rate")
@@ -68,13 +69,51 @@ class Coil(Part):
         default=None, alias="field_noise"
     )
     quench_decay_s: Seconds | None = Field(default=None, alias="quench_decay")
-    ramp_quench: list[QuenchZone] | None = None
+    ramp_quench: list[RateZone] | None = None
+    supply_rates: list[RateZone] | None = None
+    slew_t_per_s2: Annotated[float, Quantity("T/s^2", least=0, most=10)] | None = Field(
+        default=None, alias="slew"
+    )
+    joint_resistance_ohm: Annotated[float, Quantity("ohm", least=0, most=1e-3)] | None = Field(
+        default=None, alias="joint_resistance"
+    )
+    switch_resistance_ohm: Annotated[float, Quantity("ohm", least=0, most=1e4)] | None = Field(
+        default=None, alias="switch_resistance"
+    )
+    switch_mismatch_t: Annotated[float, Quantity("T", above=0, most=10)] | None = Field(
+        default=None, alias="switch_mismatch"
+    )
+    remanence_t: Annotated[float, Quantity("T", least=0, most=1)] | None = Field(
+        default=None, alias="remanence"
+    )
+    reversal_t: Annotated[float, Quantity("T", above=0, most=45)] | None = Field(
+        default=None, alias="reversal"
+    )
+    quench_rate_per_h: Annotated[float, Quantity("1/hour", least=0, most=100)] | None = Field(
+        default=None, alias="quench_rate"
+    )
+    quench_voltage_share: Annotated[float, Quantity("1", least=0, most=1)] | None = None
+    heat_capacity_j_per_k4: Annotated[float, Quantity("J/K^4", least=0, most=1e3)] | None = Field(
+        default=None, alias="heat_capacity"
+    )
+    hot_spot_share: Annotated[float, Quantity("1", above=0, most=1)] | None = None
+    recovery_w: Annotated[float, Quantity("W", above=0, most=1e5)] | None = Field(
+        default=None, alias="recovery"
+    )
+    sharing_k: Annotated[float, Quantity("K", least=0, most=100)] | None = Field(
+        default=None, alias="sharing_temperature"
+    )
+    sharing_t: Annotated[float, Quantity("T", above=0, most=100)] | None = Field(
+        default=None, alias="sharing_field"
+    )
+    covered_percent: Percent | None = Field(default=None, alias="covered")
+    bare_w: Watt | None = Field(default=None, alias="bare_heat")
 
     def given(self) -> dict[str, Any]:
         values = super().given()
-        if self.ramp_quench is not None:
-            zones = self.ramp_quench
-            values["ramp_quench"] = tuple((zone.to_t, zone.rate_t_per_s) for zone in zones)
+        for name in ("ramp_quench", "supply_rates"):
+            if (zones := getattr(self, name)) is not None:
+                values[name] = tuple((zone.to_t, zone.rate_t_per_s) for zone in zones)
         return values
 
 
@@ -170,16 +209,64 @@ class HeliumPart(Part):
     switch_heater_w: Watt | None = Field(default=None, alias="switch_heater")
 
 
+class Surroundings(Part):
+    """What reaches every lock-in: the frequency of the line, and knocks on the cryostat."""
+
+    mains_hz: Annotated[float, Quantity("Hz", least=10, most=1e3)] | None = Field(
+        default=None, alias="mains_frequency"
+    )
+    knocks_per_h: Annotated[float, Quantity("1/h", least=0, most=3600)] | None = Field(
+        default=None, alias="knocks"
+    )
+
+
 class LockInPart(Part):
-    """Noise and pickup at the input of one lock-in, by the name it has in the rig."""
+    """Noise, wiring and interference of one lock-in, by the name it has in the rig."""
 
     name: str
     noise_v_per_rthz: Annotated[float, Quantity("V/Hz^0.5", least=0, most=1)] | None = Field(
         default=None, alias="noise"
     )
+    noise_corner_hz: Annotated[float, Quantity("Hz", least=0, most=1e6)] | None = Field(
+        default=None, alias="noise_corner"
+    )
+    johnson_noise: bool | None = None
     pickup_v_s_per_t: Annotated[float, Quantity("V*s/T", least=-1, most=1)] | None = Field(
         default=None, alias="pickup"
     )
+    wiring_phase_rad: Radian | None = Field(default=None, alias="wiring_phase")
+    coupling_per_hz: Annotated[float, Quantity("1/Hz", least=-1, most=1)] | None = Field(
+        default=None, alias="coupling"
+    )
+    third_harmonic: Annotated[float, Quantity("1", least=-0.3, most=0.3)] | None = None
+    third_harmonic_at_a: Annotated[float, Quantity("A", above=0, most=1)] | None = Field(
+        default=None, alias="third_harmonic_at"
+    )
+    mains_v: Annotated[list[Volt], Field(min_length=1, max_length=20)] | None = Field(
+        default=None, alias="mains"
+    )
+    mains_phase_rad: Radian | None = Field(default=None, alias="mains_phase")
+    knock_v_s: Annotated[float, Quantity("V*s", least=0, most=1)] | None = Field(
+        default=None, alias="knock"
+    )
+    knock_step_v: Volt | None = Field(default=None, alias="knock_step")
+    full_scales_v: (
+        Annotated[
+            list[Annotated[float, Quantity("V", least=1e-9, most=10)]],
+            Field(min_length=1, max_length=60),
+        ]
+        | None
+    ) = Field(default=None, alias="full_scales")
+    input_range_v: Annotated[float, Quantity("V", above=0, most=1e3)] | None = Field(
+        default=None, alias="input_range"
+    )
+
+    def given(self) -> dict[str, Any]:
+        values = super().given()
+        for key in ("mains_v", "full_scales_v"):
+            if key in values:
+                values[key] = tuple(values[key])
+        return values
 
 
 class TrueOrbit(Strict):
@@ -213,6 +300,7 @@ class WorldFile(Strict):
     coil: Coil = Coil()
     stage: StagePart = StagePart()
     helium: HeliumPart = HeliumPart()
+    surroundings: Surroundings = Surroundings()
     lock_ins: list[LockInPart] = Field(default_factory=list, alias="lockin")
 
 

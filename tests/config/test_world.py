@@ -25,6 +25,8 @@ def test_the_shipped_world_is_read_into_si() -> None:
         ("mass = 0.192", "mass = -1", r"orbits\[1\]\.mass = -1: .*above 0"),
         ('"412.6 T"', '"412.6 K"', r"line 14: sample\.orbits\[1\]\.frequency"),
         ('base = "0.3 K"', 'bass = "0.3 K"', r"stage\.bass = .*not a key"),
+        ("[coil]", '[coil]\nremanence = "2 T"', r"coil\.remanence = .*0 T to 1 T"),
+        ("[coil]", '[coil]\nslew = "2 mT/s"', r"coil\.slew = .*T/s\^2"),
         ("seed = 20", "seed = -1", r"world\.seed = -1"),
         ('resistance = "100 ohm"', "", r"sample\.resistance: is missing"),
     ],
@@ -36,3 +38,27 @@ def test_one_message_names_what_is_wrong(tmp_path: Path, old: str, new: str, wor
     broken.write_text(text.replace(old, new, 1), encoding="utf-8")
     with pytest.raises(ConfigError, match=words):
         load_world(broken)
+
+
+def test_the_coil_in_depth_is_read_into_si(tmp_path: Path) -> None:
+    deep = tmp_path / "deep.toml"
+    more = """[coil]
+slew = "2 mT/s^2"
+supply_rates = [{ to = "3 T", rate = "0.6 T/min" }]
+joint_resistance = "1 nohm"
+quench_rate = "0.05 /hour"
+remanence = "3 mT"
+reversal = "0.4 T"
+heat_capacity = "30 mJ/K^4"
+sharing_temperature = "9 K"
+covered = "30 percent"
+"""
+    text = SHIPPED.read_text(encoding="utf-8").replace("[coil]\n", more)
+    deep.write_text(text, encoding="utf-8")
+    given = load_world(deep)[0].coil.given()
+    assert given["slew_t_per_s2"] == pytest.approx(2e-3)
+    assert given["supply_rates"] == ((3.0, pytest.approx(0.01)),)
+    assert given["joint_resistance_ohm"] == pytest.approx(1e-9)
+    assert given["quench_rate_per_h"] == pytest.approx(0.05)
+    assert given["heat_capacity_j_per_k4"] == pytest.approx(0.03)
+    assert given["covered_percent"] == pytest.approx(30.0)

@@ -67,7 +67,7 @@ def test_noise_has_the_variance_and_autocorrelation_of_the_filter(order: int) ->
 
 
 @pytest.mark.parametrize("order", [1, 2, 3, 4])
-@pytest.mark.parametrize("step", [1e-4, 0.1, 3.0])
+@pytest.mark.parametrize("step", [1e-200, 1e-13, 1e-4, 0.1, 3.0])
 def test_noise_steps_add_up_to_the_stationary_covariance(order: int, step: float) -> None:
     """M P M' + C C' = P, the discrete Lyapunov equation, for any step."""
     m, c = lowpass.noise_step(order, step)

@@ -106,7 +106,5 @@ def test_a_clock_that_does_not_move_and_a_wide_gap_are_both_taken() -> None:
 
 
 def test_unknown_measurement_is_refused_when_made() -> None:
-    p = quiet()
-    wrong = replace(p.lock_ins[0], measures="sideways")  # type: ignore[arg-type]
     with pytest.raises(ValueError, match="lock-in xx measures 'sideways'; allowed are"):
-        World(replace(p, lock_ins=(wrong,)), Clock())
+        replace(quiet().lock_ins[0], measures="sideways")  # type: ignore[arg-type]
