@@ -67,11 +67,18 @@ class Coil:
         self._switch_in_s = math.inf
         self._rate_max = p.charge_voltage_max_v * p.coil_constant_t_per_a / p.inductance_h
         self._draw = draw
+        self._moving: Motion | None = None  # kept until something changes it
+        self._settled = False
         self._chance_in_s = self._next_chance_s()
         # The coil behind a warm switch follows the leads with this lag; its joints leak a little.
         whole_ohm = p.switch_resistance_ohm + p.joint_resistance_ohm
         self._follow_s = p.inductance_h / whole_ohm if p.switch_resistance_ohm else 0.0
         self._follow_share = p.switch_resistance_ohm / whole_ohm if self._follow_s else 1.0
+
+    def _changed(self) -> None:
+        """What was worked out of the state before no longer holds."""
+        self._moving = None
+        self._settled = False
 
     def _next_chance_s(self) -> float:
         rate_per_h = self.parameters.quench_rate_per_h
@@ -91,6 +98,7 @@ class Coil:
     @target_t.setter
     def target_t(self, value: float) -> None:
         self.supply.target_t = value
+        self._changed()
 
     @property
     def rate_t_per_s(self) -> float:
@@ -100,6 +108,7 @@ class Coil:
     @rate_t_per_s.setter
     def rate_t_per_s(self, value: float) -> None:
         self.supply.rate_t_per_s = value
+        self._changed()
 
     @property
     def ramping(self) -> bool:
@@ -109,6 +118,7 @@ class Coil:
     @ramping.setter
     def ramping(self, value: bool) -> None:
         self.supply.ramping = value
+        self._changed()
 
     @property
     def lead_t(self) -> float:
@@ -121,6 +131,7 @@ class Coil:
         """Heat the persistent switch or let it cool; the switch follows with its lag."""
         p = self.parameters
         self.heater = on
+        self._changed()
         if on == self.warm:
             self._switch_in_s = math.inf
         elif math.isinf(self._switch_in_s):
@@ -140,6 +151,7 @@ class Coil:
             self.quenched = False
             self.supply.stop(0.0)
             self.coil_t = 0.0
+        self._changed()
 
     def quench(self) -> None:
         """The coil goes normal now: heater off, no ramp, current left to collapse."""
@@ -150,6 +162,7 @@ class Coil:
         self.heater = False
         self._switch_in_s = math.inf
         self.warm = True
+        self._changed()
 
     # -- what can be seen ------------------------------------------------------------------
 
@@ -159,7 +172,9 @@ class Coil:
         return self.quenched and abs(self.lead_t) + abs(self.coil_t) > 1e-3
 
     def _motion(self) -> Motion:
-        return self.supply.motion(self._rate_max if self.warm else math.inf)
+        if self._moving is None:
+            self._moving = self.supply.motion(self._rate_max if self.warm else math.inf)
+        return self._moving
 
     @property
     def lead_velocity_t_per_s(self) -> float:
@@ -257,8 +272,9 @@ class Coil:
 
     def settle(self) -> bool:
         """Take the events that are due now; True if the coil quenches here."""
-        if self.quenched:
+        if self.quenched or self._settled:
             return False
+        self._settled = True
         if self._switch_in_s <= 0.0 and self._turn_switch():
             return True
         if self._chance_in_s <= 0.0:
@@ -273,6 +289,7 @@ class Coil:
         """The switch has followed its heater; True if the coil quenches by it."""
         self._switch_in_s = math.inf
         self.warm = self.heater
+        self._moving = None
         if not self.warm:
             self.persistent_t = self.coil_t
         elif abs(self.lead_t - self.coil_t) > self.parameters.switch_mismatch_t:
@@ -314,6 +331,7 @@ class Coil:
         lags = self.parameters.field_lag_s > 0.0
         self.sample_t = path[-1] if lags else self.coil_t + self.shielding.added_t
         self._switch_in_s = max(0.0, self._switch_in_s - duration_s)
+        self._changed()
         return path
 
     def _courses(
