@@ -94,6 +94,7 @@ class Interference:
     ) -> None:
         self._parameters = parameters
         self._now = now
+        self._mains_sum_v = sum(parameters.mains_v)
         self._mains_hz = (surroundings or Surroundings()).mains_hz
         self._start_s = self._last_s = now()
         self.knocks = knocks
@@ -101,6 +102,7 @@ class Interference:
         self._turn = 1.0 + 0.0j
         self._tuning: Tuning | None = None
         self._lines: list[tuple[complex, float]] = []
+        self._outputs: list[tuple[complex, complex]] = []  # behind all poles; i times frequency
         self._free: list[complex] | None = None
         self.silent = knocks is None
 
@@ -118,6 +120,10 @@ class Interference:
         self._tuning = tuning
         self._turn = cmath.exp(-1j * tuning.phase_rad)
         self._lines = self._lines_of(tuning)
+        self._outputs = [
+            (volts / (1.0 + 1j * omega * tuning.time_constant_s) ** tuning.order, 1j * omega)
+            for volts, omega in self._lines
+        ]
         forced = self._forced()
         self._set_free([a - b for a, b in zip(held, forced, strict=True)])
 
@@ -198,7 +204,12 @@ class Interference:
 
     def output_v(self) -> complex:
         """Share of the output, X + i Y."""
-        return self._held()[-1]
+        self._catch_up()
+        since_s = self._last_s - self._start_s
+        total = self._displaced * self._turn
+        for volts, omega in self._outputs:
+            total += volts * cmath.exp(omega * since_s)
+        return total if self._free is None else total + self._free[-1]
 
     def raw_v(self, signal_v: complex) -> float:
         """Largest that the voltage at the input comes to, as the rms of a sine.
@@ -211,4 +222,4 @@ class Interference:
         self._catch_up()
         assert self._tuning is not None
         at_reference = abs(signal_v + self._coupled_v(self._tuning))
-        return at_reference + sum(self._parameters.mains_v) + abs(self._displaced)
+        return at_reference + self._mains_sum_v + abs(self._displaced)

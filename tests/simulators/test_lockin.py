@@ -60,7 +60,7 @@ def test_noise_has_the_variance_and_autocorrelation_of_the_filter(order: int) ->
     # Correlated draws carry less: 5 standard errors with n shrunk by the correlation.
     error = 5 * math.sqrt(2 / n * (1 + correlation**2) / (1 - correlation**2))
     for quadrature in values.T:
-        assert np.mean(quadrature**2) == pytest.approx(variance, rel=error)
+        assert np.mean(quadrature**2) == pytest.approx(variance, rel=error, abs=0)
         lagged = np.mean(quadrature[1:] * quadrature[:-1]) / np.mean(quadrature**2)
         assert lagged == pytest.approx(correlation, abs=error)
     assert abs(np.corrcoef(values.T)[0, 1]) < error
@@ -74,6 +74,15 @@ def test_noise_steps_add_up_to_the_stationary_covariance(order: int, step: float
     stationary = lowpass.stationary_noise(order)
     p = stationary @ stationary.T
     assert m @ p @ m.T + c @ c.T == pytest.approx(p, rel=1e-9)
+
+
+def test_an_instant_of_noise_goes_with_powers_of_its_length() -> None:
+    """White noise integrated i times: sigma goes with the length to the power of i + 1/2."""
+    _, shorter = lowpass.noise_step(4, 1e-14)
+    _, longer = lowpass.noise_step(4, 1e-10)
+    powers = 1e-4 ** (np.arange(4)[:, None] + 0.5)
+    assert shorter == pytest.approx(longer * powers, rel=1e-5, abs=0)
+    assert longer[0, 0] ** 2 == pytest.approx(0.5e-10, rel=1e-9, abs=0)
 
 
 @pytest.mark.parametrize(("order", "enbw"), [(1, 1 / 4), (2, 1 / 8), (3, 3 / 32), (4, 5 / 64)])
