@@ -96,7 +96,7 @@ async def do_night(
         teller.end(done)
     except BaseException as error:
         if isinstance(error, KeyboardInterrupt | asyncio.CancelledError):
-            _record_stop(ledger)
+            _record_stop(ledger, live=setting.description.mode == "live")
         outlet.close()
         ledger.close()
         raise
@@ -109,9 +109,11 @@ async def do_night(
     return done
 
 
-def _record_stop(ledger: Ledger) -> None:
+def _record_stop(ledger: Ledger, *, live: bool) -> None:
     """Say in the ledger that a person has stopped the night's process."""
-    data = {"outcome": "stopped", "parked": "the magnet was left as it was"}
+    data = {"outcome": "stopped"}
+    if live:
+        data["parked"] = "the magnet was left as it was"
     with contextlib.suppress(LedgerError):
         ledger.append_event(
             kind="night", name="ended", severity="high", text="stopped at the keyboard", data=data

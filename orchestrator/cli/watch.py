@@ -45,6 +45,8 @@ def watch(
             source = from_broker(BrokerAddress(host or "127.0.0.1", int(port)), rig)
         with asyncio.Runner(loop_factory=asyncio.SelectorEventLoop) as runner:
             try:
-                runner.run(watch_until_end(source, Console(), once=once))
+                picture = runner.run(watch_until_end(source, Console(), once=once))
             except KeyboardInterrupt:
                 return
+    if broker is not None and not picture.night:
+        raise Failed(f"--broker {broker} --rig {rig}: nothing was heard of a night there")

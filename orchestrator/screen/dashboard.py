@@ -11,8 +11,12 @@ from typing import Any
 from rich.console import Group, RenderableType
 from rich.text import Text
 
+from orchestrator.screen.doing import doing
 from orchestrator.screen.picture import Picture, slope
+from orchestrator.screen.rows import BAR, Lines, bar, row, title
+from orchestrator.screen.times import Times, plays_in_2000
 from orchestrator.screen.trace import oscillation, plot
+from orchestrator.screen.tripped import standing_trips
 from orchestrator.screen.verdict import Level, silent_instruments, stale_after_s, verdict
 from orchestrator.screen.wording import (
     clock,
@@ -25,19 +29,12 @@ from orchestrator.screen.wording import (
 )
 from orchestrator.units import duration_text
 
-Lines = list[Text]
-
-_REHEARSED_S = (
-    10 * 365.25 * 86400
-)  # so old is only a night rehearsed at full speed: it plays in 2000
-
 _STYLES = {
     Level.WELL: "bold black on green",
     Level.OVER: "bold reverse",
     Level.LOOK: "bold black on yellow",
     Level.WAKE: "bold white on red",
 }
-_NAME = 13  # columns of a row's name
 _LEAST_PLOT = 7
 _MOST_PLOT = 22
 _MARGINS = 6
@@ -56,7 +53,6 @@ _SPELT_OUT = str.maketrans(
     }
 )
 _AT_REST_T_PER_S = 2e-6
-_BAR = 10
 _VALUE = 13
 _STEADY_K_PER_MIN = 0.002
 
@@ -78,9 +74,10 @@ def render(
         Of what it is written to; without Unicode there is no plot, and signs are spelt out.
     """
     unicode = encoding.lower().startswith("utf")
+    times = Times.of(picture, now_unix_s)
     head = _head(picture, now_unix_s, width)
-    body = [_doing(picture), _values(picture, now_unix_s)]
-    trips = _trips(picture)
+    body = [doing(picture, times, width), _values(picture, now_unix_s)]
+    trips = standing_trips(picture, times, width)
     margins = _margins(picture, width, most=_MARGINS if height < 36 else 12)
     findings = _findings(picture, most=3 if height < 36 else 6)
     sections = [*body, *([trips] if trips else [margins]), findings]
@@ -94,7 +91,7 @@ def render(
         sections.append(drawn)
         left -= len(drawn) + 1
     if left >= 2:
-        sections.append(_events(picture, left - 1))
+        sections.append(_events(picture, times, left - 1))
     lines = head
     for section in sections:
         if section:
@@ -107,15 +104,6 @@ def render(
     return Group(*lines[:height])
 
 
-def _row(name: str, *parts: str | tuple[str, str]) -> Text:
-    """A line that begins with a name, then parts, each plain or with a style."""
-    return Text.assemble((f" {name:<{_NAME}}", "dim"), *parts)
-
-
-def _title(text: str) -> Text:
-    return Text(f" {text}", style="bold")
-
-
 def _head(picture: Picture, now_unix_s: float, width: int) -> Lines:
     """The verdict over the whole width, its reasons, and the age of what is shown."""
     found = verdict(picture, now_unix_s)
@@ -126,8 +114,8 @@ def _head(picture: Picture, now_unix_s: float, width: int) -> Lines:
         age_s = max(0.0, now_unix_s - picture.newest.unix_s)
         old = not picture.outcome and age_s > stale_after_s(picture)
         heard = f"{'LAST READ' if old else 'read'} {duration_text(age_s)} ago"
-        if age_s > _REHEARSED_S:
-            heard = "in a rehearsal's time"
+        if plays_in_2000(age_s):
+            heard = "times since its start"
         elif age_s > 86400:
             heard = f"last read {day(picture.newest.unix_s)}"
     room = max(0, width - len(found.headline) - len(heard) - 6)
@@ -140,68 +128,6 @@ def _head(picture: Picture, now_unix_s: float, width: int) -> Lines:
     if len(found.reasons) > 2:
         lines[-1].append(f"   and {len(found.reasons) - 2} more")
     return lines
-
-
-def _doing(picture: Picture) -> Lines:
-    newest = picture.newest
-    if newest is None:
-        return [_row("doing", "waiting for the first reading")]
-    if picture.outcome:
-        parked = picture.ended.data.get("parked") if picture.ended else None
-        text = f"nothing any more; ended {clock(picture.ended.unix_s)}" if picture.ended else "?"
-        rest = "; the rig is parked" if parked == "parked" else f"; parking: {plain(str(parked))}"
-        return [_row("doing", text, rest if parked else "")]
-    started = picture.step_started.get(newest.step)
-    what = _what(started.data if started else {})
-    step = (f"{plain(newest.step)}", "bold")
-    until = _until(picture, picture.step_ends_s())
-    planned = picture.planned_step(newest.step)
-    if until and planned is not None and planned.name != newest.step:
-        until = f"; its sweep{until.removeprefix(',')}"
-    lines = [_row("doing", step, what, until)]
-    parts = []
-    if picture.steps:
-        done = sum(1 for one in picture.steps if one.name in picture.steps_finished)
-        parts.append(f"{done} of {len(picture.steps)} steps done")
-    ends_s = picture.night_ends_s()
-    if picture.started_s is not None and ends_s > picture.started_s:
-        part = (newest.time_s - picture.started_s) / (ends_s - picture.started_s)
-        parts.append(f"{_bar(part)} {100 * min(1.0, part):.0f} %")
-    elif picture.state is not None and picture.state.progress is not None:
-        parts.append(f"{_bar(picture.state.progress)} {100 * picture.state.progress:.0f} %")
-    lines.append(_row("night", ", ".join(parts), _until(picture, ends_s) or _told_end(picture)))
-    return lines
-
-
-def _what(data: Mapping[str, Any]) -> str:
-    """What a step does, from the data of its start."""
-    kind, to_t, kelvin = data.get("type"), data.get("to_t"), data.get("temperature_k")
-    at = f" at {kelvin:g} K" if isinstance(kelvin, int | float) else ""
-    if kind == "field-sweep" and isinstance(to_t, int | float):
-        from_t = data.get("from_t")
-        begin = f" from {from_t:g}" if isinstance(from_t, int | float) else ""
-        return f": sweep{begin} to {to_t:g} T{at}"
-    if kind == "approach" and isinstance(to_t, int | float):
-        return f": on the way to {to_t:g} T"
-    if kind == "settle":
-        return f": wait until steady{at}"
-    if kind == "park":
-        return ": ramp to rest, heaters off"
-    return ""
-
-
-def _until(picture: Picture, time_s: float) -> str:
-    if math.isnan(time_s) or picture.newest is None:
-        return ""
-    left_s = (time_s - picture.newest.time_s) * picture.pace()
-    if left_s < 0:
-        return f", was due {clock(picture.unix_of(time_s))} ({duration_text(-left_s)} late)"
-    return f", until {clock(picture.unix_of(time_s))} ({duration_text(left_s)} left)"
-
-
-def _told_end(picture: Picture) -> str:
-    end = picture.state.expected_end_unix_s if picture.state else None
-    return "" if end is None else f", until {clock(end)}"
 
 
 def _values(picture: Picture, now_unix_s: float) -> Lines:
@@ -217,27 +143,45 @@ def _values(picture: Picture, now_unix_s: float) -> Lines:
             return f"  SILENT for {duration_text(silent[instrument])}", "bold"
         return "  OLD" if is_old else "", "bold"
 
+    def last(channel: str, decimals: int, unit: str) -> str:
+        """What a channel without a value said last."""
+        known = picture.last_known.get(channel)
+        if known is None or math.isfinite(get(channel, math.nan)):
+            return ""
+        return f"last {number_text(known, decimals, unit)}"
+
     get = picture.values.get
     field_t, kelvin = get("field_t", math.nan), get("sample_k", math.nan)
     lines = [
-        _row(
-            "field", _big(number_text(field_t, 4, "T")), *_ramp(picture, field_t), behind("magnet")
+        row(
+            "field",
+            _big(number_text(field_t, 4, "T")),
+            *_ramp(picture, field_t),
+            last("field_t", 4, "T"),
+            behind("magnet"),
         )
     ]
     setpoint, change = get("setpoint_k", math.nan), _kelvin_per_min(picture)
     wanted = f"set {setpoint:g} K" if math.isfinite(setpoint) else ""
     moving = f", changing {change:+.3f} K/min" if abs(change) >= _STEADY_K_PER_MIN else ""
     lines.append(
-        _row("temperature", _big(number_text(kelvin, 4, "K")), wanted, moving, behind("stage"))
+        row(
+            "temperature",
+            _big(number_text(kelvin, 4, "K")),
+            last("sample_k", 4, "K") or wanted,
+            moving,
+            behind("stage"),
+        )
     )
     if ohm := picture.longitudinal_ohm():
         overload = "  OVERLOAD" if get(f"{ohm[0]}_overload") == 1 else ""
         parts = (plain(ohm[0]), (overload, "bold"), behind(ohm[0]))
-        lines.append(_row("resistance", _big(ohm_text(ohm[1])), *parts))
+        lines.append(row("resistance", _big(ohm_text(ohm[1])), *parts))
     for channel, levels in picture.levels.items():
         name = channel.removesuffix("_percent")
         text = _big(number_text(get(channel, math.nan), 1, "%"))
-        lines.append(_row(plain(name), text, _trend(list(levels)), behind(name)))
+        trend = last(channel, 1, "%") or _trend(list(levels))
+        lines.append(row(plain(name), text, trend, behind(name)))
     return lines
 
 
@@ -248,7 +192,7 @@ def _big(text: str) -> tuple[str, str]:
 def _ramp(picture: Picture, field_t: float) -> list[str]:
     """Which way the field moves, how fast, and what keeps it from going faster."""
     rate = picture.field_rate_t_per_s()
-    if not math.isfinite(rate):
+    if not math.isfinite(rate) or not math.isfinite(field_t):
         return []
     if abs(rate) < _AT_REST_T_PER_S:
         return ["at rest"]
@@ -272,40 +216,27 @@ def _trend(levels: list[tuple[float, float]]) -> str:
     return f"{3600 * slope(levels):+.2f} %/h"
 
 
-def _trips(picture: Picture) -> Lines:
-    trips = picture.trips
-    if not trips:
-        return []
-    lines = [_title("Trips that stand; a person clears each by: nightfield acknowledge NAME")]
-    for name, event in list(trips.items())[:4]:
-        if event is None:
-            lines.append(Text(f"  {plain(name)}", "bold"))
-            continue
-        answer = f"  {clock(event.unix_s, seconds=True)}  answered by {plain(event.severity)}"
-        lines.append(Text.assemble((f"  {plain(name)}", "bold"), answer))
-        lines.append(Text(f"    {plain(event.text)}"))
-    return lines
-
-
 def _margins(picture: Picture, width: int, most: int) -> Lines:
     """The smallest margins, in two columns where they fit."""
     known = picture.state.margins if picture.state else {}
+    if not known and picture.outcome:
+        return []
     if not known:
         return [
-            _title("Margins"),
+            title("Margins"),
             Text("  not known: they come with the stream, and no broker has told them"),
         ]
     nearest = sorted(known.items(), key=lambda one: -1.0 if one[1] is None else one[1])[:most]
     cells = [_margin(name, margin) for name, margin in nearest]
     columns = 2 if width >= 76 else 1
     rows = math.ceil(len(cells) / columns)
-    title = "Margins, the smallest first (1 at rest, 0 trips)"
+    text = "Margins, the smallest first (1 at rest, 0 trips)"
     if len(known) > len(nearest):
-        title += f"; {len(known) - len(nearest)} larger ones left out"
-    lines = [_title(title)]
-    for row in range(rows):
+        text += f"; {len(known) - len(nearest)} larger ones left out"
+    lines = [title(text)]
+    for at in range(rows):
         line = Text("  ")
-        for cell in cells[row::rows]:
+        for cell in cells[at::rows]:
             line.append_text(cell)
         lines.append(line)
     return lines
@@ -314,23 +245,18 @@ def _margins(picture: Picture, width: int, most: int) -> Lines:
 def _margin(name: str, margin: float | None) -> Text:
     text = f"{plain(name)[:20]:<20} "
     if margin is None:
-        return Text(f"{text}{'not known':<{_BAR + 7}}", "bold")
+        return Text(f"{text}{'not known':<{BAR + 7}}", "bold")
     style = "bold" if margin < 0.1 else ""
-    return Text(f"{text}{_bar(margin)} {margin:4.2f}  ", style)
-
-
-def _bar(part: float) -> str:
-    filled = round(_BAR * min(1.0, max(0.0, part))) if math.isfinite(part) else 0
-    return "█" * filled + "░" * (_BAR - filled)
+    return Text(f"{text}{bar(margin)} {margin:4.2f}  ", style)
 
 
 def _findings(picture: Picture, most: int) -> Lines:
     finding = picture.finding
     if finding is None:
-        return [_title("Findings"), Text("  none yet; they come after each field sweep")]
+        return [title("Findings"), Text("  none yet; they come after each field sweep")]
     sweeps = finding.get("sweeps")
-    title = f"Findings after {plain(str(finding.get('after', '?')))}"
-    lines = [_title(title + (f", {sweeps} sweeps together" if sweeps not in (None, 1) else ""))]
+    text = f"Findings after {plain(str(finding.get('after', '?')))}"
+    lines = [title(text + (f", {sweeps} sweeps together" if sweeps not in (None, 1) else ""))]
     orbits = [one for one in _list(finding.get("orbits")) if isinstance(one, dict)]
     for one in orbits[:most]:
         lines.append(Text("  " + _orbit(one)))
@@ -387,12 +313,12 @@ def _plot(picture: Picture, width: int, height: int) -> Lines:
     return [Text(line) for line in lines]
 
 
-def _events(picture: Picture, most: int) -> Lines:
+def _events(picture: Picture, times: Times, most: int) -> Lines:
     newest = list(picture.events)[-max(1, most - 1) :]
     if not newest:
         return []
-    lines = [_title("Happened last, the newest first")]
+    lines = [title("Happened last, the newest first")]
     for event in reversed(newest):
         bold = "bold" if event.event_kind in ("trip", "warning") else ""
-        lines.append(Text(f"  {clock(event.unix_s, seconds=True)}  {event_text(event)}", bold))
+        lines.append(Text(f"  {times.at(event.unix_s, seconds=True)}  {event_text(event)}", bold))
     return lines

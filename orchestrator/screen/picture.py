@@ -109,6 +109,8 @@ class Picture:
         The newest reading.
     values, heard_s : dict
         Channel to its newest value, which may be NaN; instrument to the time of its newest answer.
+    last_known : dict
+        Channel to the newest value that was one.
     recent : deque
         Night's time, wall time, magnet's time, field and temperature of the newest readings.
     traces : dict
@@ -127,6 +129,7 @@ class Picture:
     newest: Newest | None = None
     values: dict[str, float] = field(default_factory=dict)
     heard_s: dict[str, float] = field(default_factory=dict)
+    last_known: dict[str, float] = field(default_factory=dict)
     recent: deque[tuple[float, float, float, float, float]] = field(
         default_factory=lambda: deque(maxlen=_RECENT)
     )
@@ -181,6 +184,12 @@ class Picture:
             return str(self.ended.data.get("outcome") or self.ended.text or "ended")
         told = self.state.outcome if self.state else "running"
         return "" if told == "running" else told
+
+    @property
+    def not_at_rest(self) -> str:
+        """Why the rig is not at rest after the night's end; empty if it is, or nothing told."""
+        parked = self.ended.data.get("parked") if self.ended else None
+        return "" if parked in (None, "parked") else str(parked)
 
     def longitudinal_ohm(self) -> tuple[str, float] | None:
         """Name of the lock-in that measures the longitudinal resistance, and its newest value."""
@@ -254,6 +263,9 @@ class Picture:
                 continue
             self.newest = Newest(one.number, one.time_s, one.unix_s, one.step)
             self.values.update(one.values)
+            self.last_known.update(
+                (name, value) for name, value in one.values.items() if math.isfinite(value)
+            )
             self.heard_s.update(one.taken_s)
             field_t = one.values.get("field_t", math.nan)
             magnet_s = one.taken_s.get("magnet", math.nan)

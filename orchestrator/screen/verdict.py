@@ -5,6 +5,7 @@ from dataclasses import dataclass
 from enum import IntEnum
 
 from orchestrator.screen.picture import Picture
+from orchestrator.screen.times import plays_in_2000
 from orchestrator.stream.messages import LOST
 from orchestrator.units import duration_text
 
@@ -52,6 +53,9 @@ def verdict(picture: Picture, now_unix_s: float) -> Verdict:
     standing = tuple(f"tripped: {name}" for name in picture.trips)
     if picture.outcome == LOST:
         return Verdict(Level.WAKE, "WAKE UP", ("the night's process has vanished", *standing))
+    if picture.not_at_rest:
+        ended = f"ended by {picture.outcome}"
+        return Verdict(Level.WAKE, "WAKE UP", ("THE RIG IS NOT AT REST", *(standing or (ended,))))
     if standing:
         return Verdict(Level.WAKE, "WAKE UP", standing)
     if picture.outcome == "done":
@@ -65,6 +69,9 @@ def _while_it_runs(picture: Picture, now_unix_s: float) -> Verdict:
     if picture.newest is None:
         return Verdict(Level.LOOK, "NO READING YET", ("nothing can be said of the rig",))
     age_s = now_unix_s - picture.newest.unix_s
+    if plays_in_2000(age_s):
+        reason = "a rehearsal at full speed without an end: it still runs, or was cut short"
+        return Verdict(Level.LOOK, "REHEARSAL", (reason,))
     if age_s > stale_after_s(picture):
         text = f"nothing read for {duration_text(age_s)}: the night or the way here has stopped"
         return Verdict(Level.WAKE, "NO NEWS", (text,))

@@ -119,7 +119,7 @@ def test_a_trip_wakes_until_it_is_acknowledged(width: int, height: int) -> None:
     assert lines[0].startswith(" WAKE UP ")
     assert lines[1] == " ! tripped: level-helium"
     text = "\n".join(lines)
-    assert "nightfield acknowledge NAME" in text
+    assert "nightfield acknowledge NIGHT TRIP --reason WHY" in text
     assert f"{clock(trip.unix_s, seconds=True)}  answered by park\n    {words}" in text
     assert f"TRIP level-helium: {words}" in text
     scene.event("acknowledge", "level-helium", "level-helium acknowledged by Ada: filled")
@@ -177,13 +177,57 @@ def test_the_end_of_a_night_and_its_loss_are_told_apart() -> None:
     assert row(lines, "doing").endswith(f"ended {clock(scene.unix_s)}; the rig is parked")
     assert level(scene) == Level.OVER
     scene = sweeping()
-    scene.event("night", "ended", "helium", outcome="level-helium", parked="not at all")
-    assert row(frame(scene), "doing").endswith("; parking: not at all")
+    scene.event("night", "ended", "helium", outcome="level-helium", parked="parked")
     assert frame(scene)[1] == " ! ended by level-helium"
+    assert level(scene) == Level.LOOK
     scene = sweeping()
     scene.state(outcome="lost")
     assert frame(scene)[:2][1] == " ! the night's process has vanished"
     assert level(scene) == Level.WAKE
+
+
+def test_a_rig_that_is_not_at_rest_after_the_nights_end_wakes() -> None:
+    """With what is not at rest in full, however narrow the terminal."""
+    scene = sweeping()
+    parked = "the magnet was not ramped to zero: magnet at TCPIP::a::1::SOCKET: connection refused"
+    scene.event("night", "ended", "x", outcome="stale-magnet", parked=parked)
+    lines = frame(scene, 60, 24)
+    assert level(scene) == Level.WAKE
+    assert lines[1:3] == [" ! THE RIG IS NOT AT REST", " ! ended by stale-magnet"]
+    at = lines.index(next(one for one in lines if "NOT AT REST" in one and one.startswith(" rig")))
+    assert " ".join(one.strip() for one in lines[at + 1 : at + 4]).startswith(parked)
+
+
+def test_a_night_rehearsed_at_full_speed_tells_times_since_its_start() -> None:
+    """It plays in the year 2000; neither that date nor an age of decades is of use to anybody."""
+    scene = sweeping()
+    scene.event("night", "ended", "done", outcome="done", parked="parked")
+    decades_s = 26 * 365.25 * 86400
+    lines = frame(scene, later_s=decades_s)
+    assert lines[0].endswith("times since its start")
+    told = "0:41:00"  # 660 s of settling and 1800 s of the sweep
+    assert row(lines, "doing").endswith(f"ended {told} after its start; the rig is parked")
+    assert any(line.startswith(f"  {told}  night ended") for line in lines)
+    running = frame(sweeping(), later_s=decades_s)
+    assert running[0].startswith(" REHEARSAL ")
+    assert "it still runs, or was cut short" in running[1]
+    assert not any(" h " in line and "nothing read" in line for line in running)
+
+
+def test_an_instrument_that_is_silent_shows_what_it_said_last() -> None:
+    """Where the field was is what somebody asks first at night."""
+    scene = sweeping()
+    before = picture_of(scene).values["field_t"]
+    scene.run(20, "sweep-1", math.nan, math.nan, silent=("magnet",))
+    assert f"last {before:.4f} T" in row(frame(scene), "field")
+
+
+def test_a_narrow_terminal_keeps_the_time_until_which() -> None:
+    """On 60 columns it goes to a line of its own."""
+    lines = frame(sweeping(), 60, 24)
+    at = lines.index(row(lines, "doing"))
+    assert lines[at + 1].strip().startswith("until ")
+    assert lines[at + 1].endswith("left)")
 
 
 def test_a_rehearsal_that_runs_faster_tells_wall_time() -> None:

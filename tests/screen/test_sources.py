@@ -79,7 +79,7 @@ def a_console() -> tuple[Console, io.StringIO]:
 
 
 def ending(scene: Scene) -> Scene:
-    scene.event("night", "ended", "done", outcome="done", parked="done")
+    scene.event("night", "ended", "done", outcome="done", parked="parked")
     return scene
 
 
