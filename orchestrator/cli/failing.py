@@ -5,6 +5,7 @@ from contextlib import contextmanager
 
 BAD_INPUT = 2
 NIGHT_ENDED_EARLY = 3
+INTERRUPTED = 130  # as a shell has it for a process that Ctrl-C ended
 
 
 class Failed(Exception):

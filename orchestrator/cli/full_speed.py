@@ -12,6 +12,7 @@ from orchestrator.cli.composition import (
     truth_of,
     world_parameters,
 )
+from orchestrator.cli.failing import INTERRUPTED, Failed
 from orchestrator.cli.folders import new_folder
 from orchestrator.cli.nights import Setting, describe, described_as_rehearsal, do_night
 from orchestrator.cli.outlets import InsideOutlet
@@ -69,6 +70,7 @@ def at_full_speed(
             clock=clock,
             wall=lambda: evening_unix_s + clock(),
             on_reading=progress.tell,
+            on_trip=progress.say,
         )
         try:
             return await do_night(
@@ -86,4 +88,8 @@ def at_full_speed(
         NightProgress(expected_s, quiet=quiet, every=200) as progress,
         asyncio.Runner(loop_factory=JumpingLoop) as runner,
     ):
-        return folder, runner.run(night(progress))
+        try:
+            return folder, runner.run(night(progress))
+        except KeyboardInterrupt:
+            text = f"stopped; what was rehearsed until then is in {folder}"
+            raise Failed(text, INTERRUPTED) from None

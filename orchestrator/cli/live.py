@@ -14,8 +14,9 @@ from types import FrameType
 from drivers.opening import visa_manager
 from orchestrator.bench import Bench, open_bench
 from orchestrator.children import start_child
+from orchestrator.cli.claims import claimed
 from orchestrator.cli.composition import Files, Simulated, addresses_of, truth_of
-from orchestrator.cli.failing import Failed
+from orchestrator.cli.failing import INTERRUPTED, Failed
 from orchestrator.cli.folders import new_folder
 from orchestrator.cli.nights import Setting, describe, described_as_rehearsal, do_night
 from orchestrator.cli.outlets import BrokerOutlet
@@ -37,23 +38,26 @@ def live_night(
     into: Path,
     pace: float,
     quiet: bool,
-    say: Callable[[str], None],
     change: Callable[[NightDescription], NightDescription] = lambda given: given,
 ) -> tuple[Path, NightDone]:
     """Run a night on the rig's own addresses; returns its folder and what became of it.
 
-    Ctrl-C asks the night to park; a second one is left to the operating system.
+    Ctrl-C asks the night to park; a second one is left to the operating system. Another night on
+    one of the instruments is refused.
     """
     expected_s = forecast(files.rig, files.sequence).duration_s
     asked = threading.Event()
 
-    async def night(progress: NightProgress) -> tuple[Path, NightDone]:
+    async def night(
+        progress: NightProgress, tell_claim: Callable[[str], None]
+    ) -> tuple[Path, NightDone]:
         bench = await open_bench(files.rig, files.rig_document, visa_manager(), inline=False)
         try:
             await _prove_pace(bench, pace)
             folder = new_folder(into, files.sequence.about.name)
+            tell_claim(f"night {folder.resolve()}")
             with Beside(files.rig.about.name) as beside:
-                say(f"night {folder}, stream on 127.0.0.1:{beside.port}")
+                progress.say(f"night {folder}, stream on 127.0.0.1:{beside.port}")
                 description = change(
                     describe(files, night=folder.name, live=True, started_unix_s=time.time())
                 )
@@ -64,6 +68,7 @@ def live_night(
                     clock=asyncio.get_running_loop().time,
                     wall=time.time,
                     on_reading=progress.tell,
+                    on_trip=progress.say,
                     park_asked=asked,
                 )
                 address = BrokerAddress(port=beside.port)
@@ -79,11 +84,16 @@ def live_night(
             await bench.close()
 
     with (
-        _parking_on_interrupt(asked, say),
+        claimed(addresses_of(files.rig)) as tell_claim,
         NightProgress(expected_s, quiet=quiet, every=max(1, int(pace / 2))) as progress,
+        _parking_on_interrupt(asked, progress.say),
         asyncio.Runner(loop_factory=lambda: PacedLoop(pace)) as runner,
     ):
-        return runner.run(night(progress))
+        try:
+            return runner.run(night(progress, tell_claim))
+        except KeyboardInterrupt:
+            text = "stopped at once: THE MAGNET IS LEFT AS IT IS, and nothing watches it"
+            raise Failed(text, INTERRUPTED) from None
 
 
 async def _prove_pace(bench: Bench, pace: float) -> None:
@@ -142,7 +152,6 @@ def rehearse_at_pace(
                 into=into,
                 pace=pace,
                 quiet=quiet,
-                say=lambda text: None,
                 change=lambda given: described_as_rehearsal(
                     replace(given, mode="rehearsal"),
                     seed=seed,

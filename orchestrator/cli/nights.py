@@ -1,5 +1,7 @@
 """Putting a night together: ledger, gate, sentinel, sampler, outlet, and the engine."""
 
+import asyncio
+import contextlib
 import threading
 from collections.abc import Callable
 from dataclasses import dataclass, field, replace
@@ -12,7 +14,7 @@ from orchestrator.cli.failing import NIGHT_ENDED_EARLY, Failed
 from orchestrator.engine.night import NightDone, run_night
 from orchestrator.engine.sampler import Sampler
 from orchestrator.engine.work import Outlet, Work
-from orchestrator.interlocks.gate import Gate
+from orchestrator.interlocks.gate import Gate, Trip
 from orchestrator.interlocks.sentinel import Sentinel
 from orchestrator.ledger.records import NightDescription
 from orchestrator.ledger.schema import LedgerError
@@ -44,6 +46,8 @@ class Setting:
         The night's clock, and wall time.
     on_reading : Callable[[Reading], None]
         For a progress display.
+    on_trip : Callable[[str], None]
+        Told of each trip, in words.
     park_asked : threading.Event
         Set when the person at the keyboard wants the night to park.
     """
@@ -54,6 +58,7 @@ class Setting:
     clock: Callable[[], float]
     wall: Callable[[], float]
     on_reading: Callable[[Reading], None]
+    on_trip: Callable[[str], None]
     park_asked: threading.Event = field(default_factory=threading.Event)
 
 
@@ -89,7 +94,9 @@ async def do_night(
         work, teller = _assemble(files, bench, setting, ledger, outlet, expected.duration_s)
         done = await run_night(work, expand(files.sequence, files.rig), expected)
         teller.end(done)
-    except BaseException:
+    except BaseException as error:
+        if isinstance(error, KeyboardInterrupt | asyncio.CancelledError):
+            _record_stop(ledger)
         outlet.close()
         ledger.close()
         raise
@@ -100,6 +107,15 @@ async def do_night(
     except LedgerError as error:
         raise Failed(f"{error}; the rig: {done.parked}", NIGHT_ENDED_EARLY) from error
     return done
+
+
+def _record_stop(ledger: Ledger) -> None:
+    """Say in the ledger that a person has stopped the night's process."""
+    data = {"outcome": "stopped", "parked": "the magnet was left as it was"}
+    with contextlib.suppress(LedgerError):
+        ledger.append_event(
+            kind="night", name="ended", severity="high", text="stopped at the keyboard", data=data
+        )
 
 
 def _assemble(
@@ -157,10 +173,12 @@ class _Teller:
         self._expected_s = max(expected_s, 1.0)
         self._told_s = float("-inf")
         self._state = NightState()
+        self._known: list[Trip] = []
 
     def tell(self, reading: Reading) -> None:
         self._outlet.reading(reading)
         self._setting.on_reading(reading)
+        self._tell_trips()
         if reading.time_s - self._told_s < _STATE_EVERY_S and reading.step == self._state.step:
             return
         self._told_s = reading.time_s
@@ -174,7 +192,14 @@ class _Teller:
         )
         self._outlet.state(self._state)
 
+    def _tell_trips(self) -> None:
+        trips = [trip for trip in self._gate.trips if trip not in self._known]
+        self._known += trips
+        for trip in trips:
+            self._setting.on_trip(f"TRIP {trip.name}: {trip.text}")
+
     def end(self, done: NightDone) -> None:
+        self._tell_trips()
         trips = tuple(trip.name for trip in self._gate.trips)
         self._outlet.state(
             self._state.model_copy(

@@ -1,5 +1,6 @@
 """A progress display for a night that runs in the foreground."""
 
+import math
 import sys
 from types import TracebackType
 from typing import Self
@@ -43,16 +44,24 @@ class NightProgress:
     ) -> None:
         self._progress.stop()
 
+    def say(self, text: str) -> None:
+        """Say something on standard error, above the bar if there is one."""
+        console = self._progress.console
+        console.print(text, markup=False, highlight=False, soft_wrap=not console.is_terminal)
+
     def tell(self, reading: Reading) -> None:
         """Show a reading."""
         if reading.number % self._every and reading.step == self._step:
             return
         self._step = reading.step
-        field_t, sample_k = reading.values["field_t"], reading.values["sample_k"]
+        field, sample = (
+            f"{value:{width}.3f}" if math.isfinite(value) else f"{'-':>{width}}"
+            for value, width in ((reading.values["field_t"], 7), (reading.values["sample_k"], 6))
+        )
         of = f"{duration_text(reading.time_s)} of {duration_text(self._expected_s)}"
         self._progress.update(
             self._task,
             description=f"{reading.step:<18}",
             completed=min(reading.time_s, self._expected_s),
-            state=f"{field_t:7.3f} T {sample_k:6.3f} K  {of}",
+            state=f"{field} T {sample} K  {of}",
         )

@@ -47,7 +47,6 @@ def run(
             into=into,
             pace=pace,
             quiet=as_json,
-            say=tell,
         )
         from orchestrator.cli.closing import close_night
 

@@ -136,7 +136,8 @@ class Work:
                 await self.sentinel.answer(trip)
         for request in self.ledger.pending_requests():
             self.ledger.take_request(request.id, self.clock())
-            text = f"{request.kind} asked for by {request.person or 'a person'}: {request.reason}"
+            what = f"{request.kind} {request.name}".strip()
+            text = f"{what} asked for by {request.person or 'a person'}: {request.reason}"
             self.event("request", request.kind, text, person=request.person)
             if request.kind == "acknowledge":
                 self.gate.acknowledge(request.name, request.person, request.reason)

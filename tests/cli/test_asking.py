@@ -1,0 +1,108 @@
+"""What a person asks of a night from the command line: taken, or refused with the reason."""
+
+import json
+import os
+import signal
+import time
+from collections.abc import Iterator
+from pathlib import Path
+from typing import Any
+
+import pytest
+
+from orchestrator.cli.claims import claim_file, claimed
+from orchestrator.cli.failing import Failed
+from orchestrator.ledger.reading import NightReader
+from tests.cli.test_commands import nightfield
+from tests.nights.test_live import SHORT, start, wait_for_step
+
+PACE = "20"
+
+
+@pytest.fixture(scope="module")
+def finished(tmp_path_factory: pytest.TempPathFactory) -> tuple[Path, str]:
+    """A folder, and the night that was rehearsed in it to its end."""
+    place = tmp_path_factory.mktemp("finished")
+    (place / "tiny.toml").write_text(SHORT, encoding="utf-8")
+    found: dict[str, Any] = json.loads(
+        nightfield("rehearse", "tiny.toml", "--json", place=place).stdout
+    )
+    return place, found["night"]
+
+
+@pytest.mark.parametrize("words", [("hold",), ("park",), ("acknowledge", "hold")])
+def test_a_request_to_a_night_that_has_ended_is_refused(
+    finished: tuple[Path, str], words: tuple[str, ...]
+) -> None:
+    place, night = finished
+    command, *rest = words
+    refused = nightfield(command, night, *rest, "--reason", "x", place=place, code=2)
+    assert "this night has ended" in refused.stderr
+    with NightReader(place / night) as reader:
+        assert reader.requests() == []
+
+
+def test_a_request_without_a_reason_is_refused(finished: tuple[Path, str]) -> None:
+    place, night = finished
+    assert "say why" in nightfield("hold", night, "--reason", " ", place=place, code=2).stderr
+
+
+@pytest.fixture(scope="module")
+def running(tmp_path_factory: pytest.TempPathFactory) -> Iterator[tuple[Path, Path]]:
+    """A folder with live.toml, and the folder of a night that runs on that rig."""
+    place = tmp_path_factory.mktemp("running")
+    (place / "tiny.toml").write_text(SHORT, encoding="utf-8")
+    rig = start("simulate", "--write-rig", "live.toml", "--pace", PACE, place=place)
+    night = None
+    try:
+        end_s = time.monotonic() + 60
+        while not (place / "live.toml").exists():
+            assert time.monotonic() < end_s
+            time.sleep(0.1)
+        night = start("run", "tiny.toml", "--rig", "live.toml", "--pace", PACE, place=place)
+        yield place, wait_for_step(place, "sweep-1-approach", night).parent
+    finally:
+        if night is not None:
+            night.kill()
+            night.communicate(timeout=20)
+        rig.send_signal(signal.SIGINT)
+        rig.communicate(timeout=20)
+
+
+def test_a_second_night_on_the_same_rig_is_refused_and_moves_nothing(
+    running: tuple[Path, Path],
+) -> None:
+    place, night = running
+    words = ("run", "tiny.toml", "--rig", "live.toml", "--pace", PACE)
+    refused = nightfield(*words, place=place, code=2)
+    assert "is in use by night" in refused.stderr
+    assert night.name in refused.stderr
+    assert len(list((place / "nights").iterdir())) == 1
+    with NightReader(night) as reader:
+        assert [one.name for one in reader.events() if one.kind == "trip"] == []
+
+
+def test_only_a_trip_that_stands_can_be_acknowledged(running: tuple[Path, Path]) -> None:
+    place, night = running
+    nightfield("hold", str(night), "--reason", "filling nitrogen", place=place)
+    words = ("acknowledge", str(night), "hould", "--reason", "filled")
+    end_s = time.monotonic() + 30
+    while "standing: hold" not in nightfield(*words, place=place, code=2).stderr:
+        assert time.monotonic() < end_s
+    nightfield("acknowledge", str(night), "hold", "--reason", "filled", place=place)
+    with NightReader(night) as reader:
+        assert [one.name for one in reader.requests()] == ["", "hold"]
+
+
+def test_a_claim_ends_with_its_night(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr("tempfile.tempdir", str(tmp_path))
+    with claimed({"magnet": "TCPIP0::a::1::SOCKET"}) as tell:
+        tell("night one")
+        both = {"stage": "GPIB0::3::INSTR", "magnet": "tcpip::A::1::socket"}
+        in_use = f"in use by night one, process {os.getpid()}"
+        with pytest.raises(Failed, match=in_use), claimed(both):
+            pass
+        with claimed({"stage": "GPIB0::3::INSTR"}):  # let go of by the night that was refused
+            pass
+    with claimed({"magnet": "TCPIP0::a::1::SOCKET"}):
+        assert claim_file("TCPIP0::a::1::SOCKET").parent == tmp_path
