@@ -159,6 +159,13 @@ class Gas:
         share = self.parameters.extended_share**2
         return np.asarray(np.sqrt(share + (1 - share) * (1 - apart) ** 2))
 
+    def extended_width(self, field_t: Array, temperature_k: float) -> Array:
+        """Width of a step of the Hall resistance over the spacing of the levels."""
+        level = self._extended(field_t) * np.sqrt(
+            self.parameters.dingle_k / self.spacing_k(field_t)
+        )
+        return np.asarray(np.hypot(level, 2 * temperature_k / self.spacing_k(field_t)))
+
     def _xy_ohm(self, field_t: Array, temperature_k: Array, u: Array) -> Array:
         p = self.parameters
         wave = self._harmonics(field_t, self._extended(field_t))
@@ -201,8 +208,7 @@ class GasTable:
         """Values of 1/B that are close together where levels are sharp."""
         p = self.parameters
         fine = np.linspace(1 / p.field_max_t, 1 / self.lowest_t, 20_001)
-        width = gas._extended(1 / fine) * np.sqrt(p.dingle_k / gas.spacing_k(1 / fine))
-        width = np.hypot(width, 2 * p.coldest_k / gas.spacing_k(1 / fine))
+        width = gas.extended_width(1 / fine, p.coldest_k)
         each = np.maximum(_POINTS_A_PERIOD, _POINTS_A_WIDTH / width) * p.frequency_t
         steps = 0.5 * (each[1:] + each[:-1]) * np.diff(fine)
         count = np.concatenate([[0.0], np.cumsum(steps)])

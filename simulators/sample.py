@@ -11,6 +11,8 @@ from dataclasses import dataclass
 
 from scipy import constants
 
+from simulators.landau import GasParameters
+
 _DAMPING_T_PER_K = (
     2 * math.pi**2 * constants.k * constants.m_e / (constants.hbar * constants.e)
 )  # 14.6932 T/K
@@ -62,6 +64,8 @@ class SampleParameters:
     hall_density_m2 : float
         Sheet density n in B/(n e); negative for holes' sign.
     orbits : tuple of Orbit
+    gas : GasParameters or None
+        A two-dimensional gas from its Landau levels, in place of all the above.
     """
 
     resistance_ohm: float = 100.0
@@ -69,6 +73,7 @@ class SampleParameters:
     magnetoresistance_per_t2: float = 0.001
     hall_density_m2: float = 5e16
     orbits: tuple[Orbit, ...] = ()
+    gas: GasParameters | None = None
 
     @property
     def mobility_m2_per_v_s(self) -> float:
@@ -101,9 +106,17 @@ class Sample:
         self.clear_t = self._clear_above_t()
         self.slowest_t = 2 * math.pi * min((o.frequency_t for o in parameters.orbits), default=0.0)
 
-    def hall_ohm(self, field_t: float) -> float:
+    def smooth_hall_ohm(self, field_t: float) -> float:
         """R_xy, odd in the field."""
         return self._hall_ohm_per_t * field_t
+
+    def hall_ohms(self, fields_t: list[float], kelvins: list[float]) -> list[float]:
+        """R_xy at several fields."""
+        return [self._hall_ohm_per_t * field_t for field_t in fields_t]
+
+    def longitudinal_ohms(self, fields_t: list[float], kelvins: list[float]) -> list[float]:
+        """R_xx at several fields and temperatures."""
+        return [self.longitudinal_ohm(b, t) for b, t in zip(fields_t, kelvins, strict=True)]
 
     def longitudinal_ohm(self, field_t: float, temperature_k: float) -> float:
         """R_xx, even in the field; at B = 0 the oscillations are gone."""

@@ -6,6 +6,7 @@ from dataclasses import dataclass, field
 
 from simulators.coil import Coil, CoilParameters
 from simulators.cryostat import Stage, StageParameters
+from simulators.gas_sample import GasSample
 from simulators.helium import HeliumBath, HeliumParameters
 from simulators.interference import Interference, Knocks
 from simulators.lockin import LockIn, LockInParameters
@@ -62,14 +63,15 @@ class World:
         self._time_s = now()
         self.coil = Coil(parameters.coil, self.noise("magnet/quench").take)
         self.stage = Stage(parameters.stage, self._excitation_w)
-        self.sample = Sample(parameters.sample)
+        gas = parameters.sample.gas
+        self.sample = GasSample(parameters.sample) if gas else Sample(parameters.sample)
         self.helium = HeliumBath(parameters.helium)
         self.lock_ins = {p.name: self._lock_in(p) for p in parameters.lock_ins}
         self.gauges = {p.name: p for p in parameters.gauges}
-        self._longitudinal = [
+        self._oscillating = [
             lock_in
             for lock_in in self.lock_ins.values()
-            if lock_in.parameters.measures == "longitudinal"
+            if gas or lock_in.parameters.measures == "longitudinal"
         ]
         self._quiet_s = parameters.stage.response_s / 3.0
 
@@ -219,7 +221,7 @@ class World:
         Near zero field they are damped to nothing and pass at any frequency; to follow them there
         would cost much and show nothing.
         """
-        if not self._longitudinal:
+        if not self._oscillating:
             return False
         farthest = abs(self.coil.sample_t) + path_t
         if not path_t or farthest > self.sample.clear_t:
@@ -230,7 +232,7 @@ class World:
         bound = self.sample.oscillation_bound(farthest)
         return any(
             bound > _UNSEEN * max(1.0, omega * lock_in.time_constant_s)
-            for lock_in in self._longitudinal
+            for lock_in in self._oscillating
         )
 
     def _measure(
@@ -246,24 +248,30 @@ class World:
         # Cubic through both ends' temperatures and slopes.
         d0, d1 = d0 * duration_s, d1 * duration_s
         c2, c3 = 3 * (t1 - t0) - 2 * d0 - d1, 2 * (t0 - t1) + d0 + d1
-        longitudinal: list[float] | None = None
         moving = fields[0] != fields[-1]
         rates = None
         if moving and any(p.pickup_v_s_per_t for p in self.parameters.lock_ins):
             rates = _slopes(fields, duration_s)
+        sample = self.sample
+        kelvins: list[float] = []
+        if oscillates:
+            parts = (i / nodes for i in range(nodes + 1))
+            kelvins = [t0 + s * (d0 + s * (c2 + s * c3)) for s in parts]
+        along: list[float] | None = None
+        across: list[float] | None = None
         for lock_in in self.lock_ins.values():
             if lock_in.parameters.measures == "hall":
-                ohms = [self.sample.hall_ohm(b) for b in fields]
+                if across is None and oscillates:
+                    across = sample.hall_ohms(fields, kelvins)
+                elif across is None:
+                    across = [sample.smooth_hall_ohm(b) for b in fields]
+                ohms = across
             else:
-                if longitudinal is None and not oscillates:
-                    longitudinal = [self.sample.background_ohm(b) for b in fields]
-                elif longitudinal is None:
-                    ohm = self.sample.longitudinal_ohm
-                    longitudinal = [
-                        ohm(b, t0 + s * (d0 + s * (c2 + s * c3)))
-                        for b, s in zip(fields, (i / nodes for i in range(nodes + 1)), strict=True)
-                    ]
-                ohms = longitudinal
+                if along is None and oscillates:
+                    along = sample.longitudinal_ohms(fields, kelvins)
+                elif along is None:
+                    along = [sample.background_ohm(b) for b in fields]
+                ohms = along
             lock_in.advance(duration_s, ohms, rates)
 
 

@@ -9,9 +9,12 @@ from orchestrator.config.document import Document
 from orchestrator.config.rig import Rig, load_rig
 from orchestrator.config.sequence import Sequence, load_sequence
 from orchestrator.config.world import WorldFile, load_world
+from orchestrator.physics.orbits import frequency_of_density_2d_t
 from simulators.coil import CoilParameters
 from simulators.cryostat import StageParameters
+from simulators.gas_sample import gas_of
 from simulators.helium import HeliumParameters
+from simulators.landau import GasParameters
 from simulators.lockin_parameters import LockInParameters, Surroundings
 from simulators.sample import Orbit, SampleParameters
 from simulators.world import GaugeParameters, WorldParameters
@@ -69,15 +72,38 @@ def load_simulated(world: Path | None, rig: Rig) -> Simulated:
             LockInParameters(**lock_in.given())
         except ValueError as error:
             raise document.refuse(("lockin", index), str(error)) from None
-    try:
-        _stage_parameters(rig, model)
-    except ValueError as error:
-        raise document.refuse(("stage",), str(error)) from None
+    for key, parameters in (("stage", _stage_parameters), ("coil", _coil_parameters)):
+        try:
+            parameters(rig, model)
+        except ValueError as error:
+            raise document.refuse((key,), str(error)) from None
     return Simulated(model, document)
 
 
 def world_parameters(rig: Rig, world: WorldFile, seed: int) -> WorldParameters:
     """The simulated world: what the world file says, and what the rig says where it is silent."""
+    noise = {one.name: one.given() for one in world.lock_ins}
+    lock_ins = tuple(
+        LockInParameters(
+            measures=one.measures,
+            series_resistance_ohm=one.series_resistance_ohm,
+            **{"name": one.name, **noise.get(one.name, {})},
+        )
+        for one in rig.lock_ins
+    )
+    return WorldParameters(
+        seed=seed,
+        coil=_coil_parameters(rig, world),
+        stage=_stage_parameters(rig, world),
+        sample=_sample_parameters(rig, world),
+        helium=HeliumParameters(**world.helium.given()),
+        lock_ins=lock_ins,
+        gauges=tuple(GaugeParameters(one.name) for one in rig.gauges),
+        surroundings=Surroundings(**world.surroundings.given()),
+    )
+
+
+def _coil_parameters(rig: Rig, world: WorldFile) -> CoilParameters:
     magnet = rig.magnet
     coil: dict[str, Any] = {
         "coil_constant_t_per_a": magnet.coil_constant_t_per_a,
@@ -90,31 +116,30 @@ def world_parameters(rig: Rig, world: WorldFile, seed: int) -> WorldParameters:
     }
     if magnet.switch:
         coil |= {"switch_warm_s": magnet.switch.warm_s, "switch_cool_s": magnet.switch.cool_s}
-    noise = {one.name: one.given() for one in world.lock_ins}
-    lock_ins = tuple(
-        LockInParameters(
-            measures=one.measures,
-            series_resistance_ohm=one.series_resistance_ohm,
-            **{"name": one.name, **noise.get(one.name, {})},
-        )
-        for one in rig.lock_ins
-    )
+    return CoilParameters(**coil | world.coil.given())
+
+
+def _sample_parameters(rig: Rig, world: WorldFile) -> SampleParameters:
     sample = world.sample
-    return WorldParameters(
-        seed=seed,
-        coil=CoilParameters(**coil | world.coil.given()),
-        stage=_stage_parameters(rig, world),
-        sample=SampleParameters(
-            resistance_ohm=sample.resistance_ohm,
-            magnetoresistance_per_t=sample.magnetoresistance_per_t,
-            magnetoresistance_per_t2=sample.magnetoresistance_per_t2,
-            hall_density_m2=sample.hall_density_m2,
-            orbits=tuple(Orbit(**one.model_dump()) for one in sample.orbits),
-        ),
-        helium=HeliumParameters(**world.helium.given()),
-        lock_ins=lock_ins,
-        gauges=tuple(GaugeParameters(one.name) for one in rig.gauges),
-        surroundings=Surroundings(**world.surroundings.given()),
+    if sample.gas is not None:
+        stage = _stage_parameters(rig, world)
+        return gas_of(
+            GasParameters(
+                **sample.gas.model_dump(),
+                resistance_ohm=sample.resistance_ohm,
+                field_max_t=rig.magnet.field_max_t,
+                coldest_k=stage.base_k,
+                hottest_k=stage.maximum_k,
+            )
+        )
+    assert sample.hall_density_m2 is not None
+    assert sample.orbits is not None
+    return SampleParameters(
+        resistance_ohm=sample.resistance_ohm,
+        magnetoresistance_per_t=sample.magnetoresistance_per_t,
+        magnetoresistance_per_t2=sample.magnetoresistance_per_t2,
+        hall_density_m2=sample.hall_density_m2,
+        orbits=tuple(Orbit(**one.model_dump()) for one in sample.orbits),
     )
 
 
@@ -125,9 +150,12 @@ def _stage_parameters(rig: Rig, world: WorldFile) -> StageParameters:
 
 def truth_of(world: WorldFile) -> list[dict[str, float]]:
     """What the analysis ought to find, for the table at the end of a rehearsal."""
+    if gas := world.sample.gas:
+        frequency_t = frequency_of_density_2d_t(gas.density_m2, gas.degeneracy)
+        return [{"frequency_t": frequency_t, "mass": gas.mass, "dingle_k": gas.dingle_k}]
     return [
         {"frequency_t": one.frequency_t, "mass": one.mass, "dingle_k": one.dingle_k}
-        for one in world.sample.orbits
+        for one in world.sample.orbits or []
     ]
 
 

@@ -280,16 +280,27 @@ class TrueOrbit(Strict):
     harmonics: Annotated[int, Field(ge=1, le=10)] = 1
 
 
+class TrueGas(Strict):
+    """A two-dimensional gas, as it really is."""
+
+    density_m2: Annotated[float, Quantity("1/m^2", above=1e12, most=1e18)] = Field(alias="density")
+    mass: Annotated[float, Quantity("1", above=0, most=100)]
+    dingle_k: Annotated[float, Quantity("K", least=0.01, most=100)] = Field(alias="dingle")
+    degeneracy: Annotated[int, Field(ge=1, le=24)] = 2
+    extended_share: Annotated[float, Quantity("1", least=0.05, most=1)] = 0.2
+
+
 class SamplePart(Strict):
-    """The sample, as it really is."""
+    """The sample, as it really is: orbits, or a two-dimensional gas."""
 
     resistance_ohm: Ohm = Field(alias="resistance")
     magnetoresistance_per_t: PerTesla = Field(default=0.0, alias="magnetoresistance_linear")
     magnetoresistance_per_t2: PerTesla2 = Field(default=0.0, alias="magnetoresistance_quadratic")
-    hall_density_m2: Annotated[float, Quantity("1/m^2", least=-1e22, most=1e22)] = Field(
-        alias="hall_density"
+    hall_density_m2: Annotated[float, Quantity("1/m^2", least=-1e22, most=1e22)] | None = Field(
+        default=None, alias="hall_density"
     )
-    orbits: Annotated[list[TrueOrbit], Field(min_length=1, max_length=20)]
+    orbits: Annotated[list[TrueOrbit], Field(min_length=1, max_length=20)] | None = None
+    gas: TrueGas | None = None
 
 
 class WorldFile(Strict):
@@ -307,4 +318,25 @@ class WorldFile(Strict):
 def load_world(path: str | Path) -> tuple[WorldFile, Document]:
     """Read and check a world file. Raises ConfigError."""
     document = read_document(path)
-    return build(WorldFile, document), document
+    model = build(WorldFile, document)
+    _check_sample(model.sample, document)
+    return model, document
+
+
+def _check_sample(sample: SamplePart, document: Document) -> None:
+    """Orbits with their Hall density, or a gas, which has all of that in it."""
+    of_orbits = ("orbits", "hall_density")
+    of_smooth = ("magnetoresistance_linear", "magnetoresistance_quadratic")
+    given = {
+        field.alias or name
+        for name, field in SamplePart.model_fields.items()
+        if name in sample.model_fields_set
+    }
+    if sample.gas is None:
+        for key in of_orbits:
+            if key not in given:
+                raise document.refuse(("sample", key), "is missing, and has no default")
+        return
+    for key in (*of_orbits, *of_smooth):
+        if key in given:
+            raise document.refuse(("sample", key), "does not go with sample.gas")

@@ -4,7 +4,9 @@ from pathlib import Path
 
 import pytest
 
+from orchestrator.cli.composition import load_simulated, truth_of
 from orchestrator.config.document import ConfigError
+from orchestrator.config.rig import load_rig
 from orchestrator.config.world import load_world
 
 SHIPPED = Path(__file__).parents[2] / "sequences" / "worlds" / "demonstration.toml"
@@ -62,3 +64,53 @@ covered = "30 percent"
     assert given["quench_rate_per_h"] == pytest.approx(0.05)
     assert given["heat_capacity_j_per_k4"] == pytest.approx(0.03)
     assert given["covered_percent"] == pytest.approx(30.0)
+
+
+GAS = """[world]
+name = "gas"
+[sample]
+resistance = "40 ohm"
+[sample.gas]
+density = "8e11 /cm^2"
+mass = 0.067
+dingle = "3 K"
+"""
+
+
+def test_a_gas_stands_in_place_of_orbits(tmp_path: Path) -> None:
+    file = tmp_path / "gas.toml"
+    file.write_text(GAS, encoding="utf-8")
+    sample = load_world(file)[0].sample
+    assert sample.gas is not None
+    assert sample.gas.density_m2 == pytest.approx(8e15)
+    # F = n h/(2 e), SI 2019.
+    (truth,) = truth_of(load_world(file)[0])
+    assert truth["frequency_t"] == pytest.approx(8e15 * 6.62607015e-34 / (2 * 1.602176634e-19))
+
+
+@pytest.mark.parametrize(
+    ("old", "new", "words"),
+    [
+        ('"40 ohm"', '"40 ohm"\nhall_density = "8e15 /m^2"', r"sample\.hall_density.*not go with"),
+        ("[sample.gas]", "[sample.gases]", r"sample\.gases.*not a key"),
+        ('density = "8e11 /cm^2"', "", r"sample\.gas\.density: is missing"),
+    ],
+)
+def test_a_gas_that_is_not_one_is_refused(tmp_path: Path, old: str, new: str, words: str) -> None:
+    file = tmp_path / "gas.toml"
+    assert old in GAS
+    file.write_text(GAS.replace(old, new), encoding="utf-8")
+    with pytest.raises(ConfigError, match=words):
+        load_world(file)
+
+
+def test_a_coil_that_contradicts_itself_is_refused_with_the_file(tmp_path: Path) -> None:
+    deep = tmp_path / "deep.toml"
+    text = SHIPPED.read_text(encoding="utf-8")
+    deep.write_text(
+        text.replace("[coil]\n", '[coil]\nremanence = "0.3 T"\nreversal = "0.4 T"\n'),
+        encoding="utf-8",
+    )
+    rig, _ = load_rig(SHIPPED.parents[1] / "rigs" / "demonstration.toml")
+    with pytest.raises(ConfigError, match=r"deep\.toml.*reversal_t of the coil is 0\.4 T"):
+        load_simulated(deep, rig)

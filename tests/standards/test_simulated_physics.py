@@ -132,7 +132,7 @@ def test_resistance_is_even_and_hall_resistance_odd_in_field_and_zero_field_is_s
     """Onsager-Casimir symmetry of a uniform sample."""
     sample = Sample(quiet().sample)
     assert sample.longitudinal_ohm(-7.0, 1.0) == sample.longitudinal_ohm(7.0, 1.0)
-    assert sample.hall_ohm(-7.0) == -sample.hall_ohm(7.0)
+    assert sample.smooth_hall_ohm(-7.0) == -sample.smooth_hall_ohm(7.0)
     assert sample.longitudinal_ohm(0.0, 0.3) == 100.0
     assert sample.longitudinal_ohm(1e-300, 0.3) == pytest.approx(100.0)
 
