@@ -73,7 +73,9 @@ def _convert(text: str, unit: str) -> float:
             raise UnitError(f'expected a unit as well, such as "{text.strip()} {unit}"')
         return float(quantity.to(unit).magnitude)
     except pint.UndefinedUnitError as error:
-        raise UnitError(f"expected a unit like {unit}; {error}") from None
+        names = (error.unit_names,) if isinstance(error.unit_names, str) else error.unit_names
+        unknown = ", ".join(map(str, names))
+        raise UnitError(f"expected a unit like {unit}; {unknown} is not a unit") from None
     except pint.DimensionalityError:
         raise UnitError(f"expected a unit that converts to {unit}") from None
     except UnitError:

@@ -62,12 +62,15 @@ def run(
 def _ask_the_facility(files: "Files") -> None:
     """Refuse a live run where the rig file does not say whose rules apply."""
     facility = files.rig.facility
-    for key, meaning in (
-        ("rules", "the facility's rules that apply to this magnet"),
-        ("contact", "the person to call, and how"),
-        ("permission", "who has permitted unattended running, and for when"),
-    ):
-        if not getattr(facility, key).strip():
-            place = files.rig_document.where("facility", key)
-            raise Failed(f"{place}: no live run without {meaning}")
+    missing = [
+        f"{files.rig_document.where('facility', key)}: no live run without {meaning}"
+        for key, meaning in (
+            ("rules", "the facility's rules that apply to this magnet"),
+            ("contact", "the person to call, and how"),
+            ("permission", "who has permitted unattended running, and for when"),
+        )
+        if not getattr(facility, key).strip()
+    ]
+    if missing:
+        raise Failed("\n".join(missing))
     tell(f"rules: {facility.rules}\ncall: {facility.contact}\npermission: {facility.permission}")

@@ -8,6 +8,8 @@ from typing import Any
 
 Key = tuple[str | int, ...]
 
+_MOST = 12  # further problems that are told at once
+
 _BARE = r'(?:[A-Za-z0-9_-]+|"(?:[^"\\]|\\.)*"|\'[^\']*\')'
 _DOTTED = rf"{_BARE}(?:\s*\.\s*{_BARE})*"
 _HEADER = re.compile(rf"^\s*(\[\[?)\s*({_DOTTED})\s*\]\]?\s*(?:#.*)?$")
@@ -15,13 +17,15 @@ _PAIR = re.compile(rf"^\s*({_DOTTED})\s*=\s*")
 
 
 class ConfigError(Exception):
-    """One thing is wrong in a file that a person wrote.
+    """Something is wrong in a file that a person wrote.
 
     Attributes
     ----------
     path, line, key, value, allowed
         Where it stands, what was found there, and what may stand there. ``line`` and ``key`` are
         None where the file as a whole is meant.
+    others : tuple of ConfigError
+        What else is wrong in the same file, as far as it is known; told below the first.
     """
 
     def __init__(
@@ -33,7 +37,9 @@ class ConfigError(Exception):
         key: str | None = None,
         value: str | None = None,
         allowed: str | None = None,
+        others: "tuple[ConfigError, ...]" = (),
     ) -> None:
+        self.others = others
         self.path, self.problem = path, problem
         self.line, self.key, self.value, self.allowed = line, key, value, allowed
         super().__init__(str(self))
@@ -43,7 +49,11 @@ class ConfigError(Exception):
         subject = f": {self.key}" if self.key else ""
         given = f" = {self.value}" if self.value is not None else ""
         allowed = f" (allowed: {self.allowed})" if self.allowed else ""
-        return f"{place}{subject}{given}: {self.problem}{allowed}"
+        first = f"{place}{subject}{given}: {self.problem}{allowed}"
+        lines = [first, *map(str, self.others[:_MOST])]
+        if len(self.others) > _MOST:
+            lines.append(f"and {len(self.others) - _MOST} more")
+        return "\n".join(lines)
 
 
 @dataclass(frozen=True)
@@ -58,8 +68,9 @@ class Document:
     def line_of(self, key: Key) -> int | None:
         """Line of the key, or of the nearest table around it; None for the file as a whole."""
         while key:
-            if key in self.lines:
-                return self.lines[key]
+            for place in (key, (*key, 0)):  # a list of tables stands where its first one does
+                if place in self.lines:
+                    return self.lines[place]
             key = key[:-1]
         return None
 

@@ -24,15 +24,17 @@ class Quantity:
     @property
     def allowed(self) -> str:
         """The range in words, for messages."""
-        unit = "" if self.unit == "1" else f" {self.unit}"
+        per_minute = self.unit in ("T/s", "K/s")  # as the trade quotes them
+        scale, name = (60.0, f"{self.unit[0]}/min") if per_minute else (1.0, self.unit)
+        unit = "" if name == "1" else f" {name}"
         low = (
-            f"above {self.above:g}{unit}"
+            f"above {scale * self.above:g}{unit}"
             if self.above is not None
-            else f"{self.least:g}{unit}"
+            else f"{scale * self.least:g}{unit}"
             if self.least is not None
             else None
         )
-        high = None if self.most is None else f"{self.most:g}{unit}"
+        high = None if self.most is None else f"{scale * self.most:g}{unit}"
         if low and high:
             return f"{low} to {high}"
         if low:

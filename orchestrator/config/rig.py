@@ -58,23 +58,34 @@ class PersistentSwitch(Strict):
 class Magnet(Spoken):
     """Coil, supply and their ceilings."""
 
-    field_max_t: FieldTesla = Field(alias="field_max")
+    field_max_t: FieldTesla = Field(
+        alias="field_max", description="it keeps the coil within the field that it is made for"
+    )
     coil_constant_t_per_a: Annotated[float, Quantity("T/A", above=0, most=10)] = Field(
         alias="coil_constant"
     )
-    inductance_h: Annotated[float, Quantity("H", above=0, most=1000)] = Field(alias="inductance")
+    inductance_h: Annotated[float, Quantity("H", above=0, most=1000)] = Field(
+        alias="inductance", description="a quench is told from a ramp by it"
+    )
     lead_resistance_ohm: Annotated[float, Quantity("ohm", least=0, most=1)] = Field(
         alias="lead_resistance"
     )
     charge_voltage_max_v: Annotated[float, Quantity("V", above=0, most=100)] = Field(
-        alias="charge_voltage_max"
+        alias="charge_voltage_max",
+        description="it keeps the voltage of charging within what coil and supply stand",
     )
     unexplained_voltage_max_v: Annotated[float, Quantity("V", above=0, most=10)] = Field(
-        alias="unexplained_voltage_max"
+        alias="unexplained_voltage_max",
+        description="a terminal voltage beyond it is taken for a quench",
     )
-    rate_resolution_t_per_s: Rate = Field(alias="rate_resolution")
+    rate_resolution_t_per_s: Rate = Field(
+        alias="rate_resolution",
+        description="rates are rounded down to it, so that none is exceeded",
+    )
     legs_max: Annotated[int, Field(ge=1, le=200)] = 24
-    ramp_ceiling: Annotated[list[RampZone], Field(min_length=1)]
+    ramp_ceiling: Annotated[list[RampZone], Field(min_length=1)] = Field(
+        description="it keeps the coil from a ramp so fast that it quenches"
+    )
     switch: PersistentSwitch | None = None
 
 
@@ -82,15 +93,19 @@ class Stage(Spoken):
     """The sample stage, its controller, and what its temperature may be."""
 
     temperature_min_k: Kelvin = Field(alias="temperature_min")
-    temperature_max_k: Kelvin = Field(alias="temperature_max")
-    temperature_trip_k: Kelvin = Field(alias="temperature_trip")
+    temperature_max_k: Kelvin = Field(
+        alias="temperature_max", description="it keeps sample and stage from being heated too far"
+    )
+    temperature_trip_k: Kelvin = Field(
+        alias="temperature_trip", description="above it the night parks"
+    )
     ramp_max_k_per_s: Annotated[float, Quantity("K/s", above=0, most=10)] = Field(alias="ramp_max")
     response_s: Seconds = Field(alias="response")
     eddy_coefficient_w_s2_per_t2: Annotated[float, Quantity("W*s^2/T^2", least=0, most=100)] = (
         Field(alias="eddy_coefficient")
     )
     eddy_power_max_w: Annotated[float, Quantity("W", above=0, most=1)] = Field(
-        alias="eddy_power_max"
+        alias="eddy_power_max", description="it keeps a ramp from heating the sample"
     )
 
 
@@ -115,14 +130,18 @@ class Gauge(Spoken):
     """A gauge of a level in percent, and the level below which the night must end."""
 
     name: Name
-    least_percent: Annotated[float, Quantity("percent", least=0, most=100)] = Field(alias="least")
+    least_percent: Annotated[float, Quantity("percent", least=0, most=100)] = Field(
+        alias="least", description="below it the night parks, before the cryostat is empty"
+    )
 
 
 class Sampling(Strict):
     """How often the instruments are read, and when a value is too old to be believed."""
 
     interval_s: Annotated[float, Quantity("s", least=0.01, most=3600)] = Field(alias="interval")
-    stale_after_s: Seconds = Field(alias="stale_after")
+    stale_after_s: Seconds = Field(
+        alias="stale_after", description="a value older than this is not believed; the night parks"
+    )
 
 
 class Rig(Strict):

@@ -99,6 +99,13 @@ def load_sequence(path: str | Path, rig: Rig, rig_document: Document) -> tuple[S
     sequence = build(Sequence, document)
     names: set[str] = set()
     for key, step in _with_places(sequence):
+        if isinstance(step, FieldSweep) and step.from_t == step.to_t:
+            raise document.refuse(
+                (*key, "to"),
+                "is where the sweep begins; the field would not move",
+                value=f"{step.to_t:g} T",
+                allowed=f"another field than {step.from_t:g} T",
+            )
         if step.name in names:
             raise document.refuse(
                 (*key, "name"),

@@ -16,7 +16,7 @@ from orchestrator.ledger.reading import NightReader
 from tests.cli.test_commands import nightfield
 from tests.nights.test_live import SHORT, start, wait_for_step
 
-PACE = "20"
+PACE = "3"  # a loaded computer must not make a reading stale
 
 
 @pytest.fixture(scope="module")
@@ -60,7 +60,7 @@ def running(tmp_path_factory: pytest.TempPathFactory) -> Iterator[tuple[Path, Pa
             assert time.monotonic() < end_s
             time.sleep(0.1)
         night = start("run", "tiny.toml", "--rig", "live.toml", "--pace", PACE, place=place)
-        yield place, wait_for_step(place, "sweep-1-approach", night).parent
+        yield place, wait_for_step(place, "ready", night).parent
     finally:
         if night is not None:
             night.kill()
