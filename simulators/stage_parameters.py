@@ -4,8 +4,6 @@ import itertools
 from dataclasses import dataclass
 from typing import NamedTuple
 
-from simulators.vapour_pressure import bath_k
-
 PERIODS_PER_RESPONSE_MIN = 4.0
 LAG_MIN_S = 1e-3
 """A shorter lag of sample or thermometer counts as this."""
@@ -114,12 +112,11 @@ class StageParameters:
     recharge_s: float = 1800.0
 
     def __post_init__(self) -> None:
-        if self.bath_pressure_pa:
-            bath_k(self.bath_pressure_pa)
+        cold_k = self.cold_k  # refuses a pressure that is off the scale
         self._check_capacity()
         self._check_response()
         self._check_tables()
-        if self.charge_j and self.spent_base_k <= self.cold_k:
+        if self.charge_j and self.spent_base_k <= cold_k:
             raise ValueError(
                 f"spent_base_k of the stage is {self.spent_base_k:g} K; "
                 f"allowed is above its base of {self.cold_k:g} K"
@@ -180,7 +177,11 @@ class StageParameters:
     @property
     def cold_k(self) -> float:
         """Base while the cold end is cold: of the pumped bath, if there is one."""
-        return bath_k(self.bath_pressure_pa) if self.bath_pressure_pa else self.base_k
+        if not self.bath_pressure_pa:
+            return self.base_k
+        from simulators.vapour_pressure import bath_k  # slow to import, and needed here alone
+
+        return bath_k(self.bath_pressure_pa)
 
     @property
     def ranges_w(self) -> tuple[float, ...]:

@@ -4,8 +4,10 @@ Between its edges a ceiling is monotonic in the field's magnitude, so that its l
 stretch is found at the stretch's ends, at zero field, or at an edge.
 """
 
+import math
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
@@ -46,7 +48,7 @@ class Ceilings:
     def at(self, field_t: Array) -> tuple[Array, list[str]]:
         """The rate in T/s allowed at each field in T, and the name of the ceiling that binds."""
         size = np.abs(np.asarray(field_t, dtype=float))
-        rates = np.array([member.rate_t_per_s(size) for member in self.members])
+        rates = self._rates(size)
         binding = np.argmin(rates, axis=0)
         return rates.min(axis=0), [self.members[index].name for index in binding]
 
@@ -55,13 +57,21 @@ class Ceilings:
         low, high = sorted((from_t, to_t))
         points = {abs(low), abs(high)} | ({0.0} if low < 0 < high else set())
         least, most = min(points), max(points)
-        for edge in (edge for member in self.members for edge in member.edges_t):
-            # An edge belongs to the zone below it, so the zone above is looked at just beyond.
-            if least <= edge < most:
-                points |= {edge, float(np.nextafter(edge, np.inf))}
-        rates, names = self.at(np.array(sorted(points)))
-        at = int(np.argmin(rates))
-        return float(rates[at]), names[at]
+        points.update(edge for edge in self._edges_t if least <= edge <= most)
+        # A row for each point, so that the first of equal rates is the one nearest to zero field.
+        rates = self._rates(np.array(sorted(points))).T
+        point, member = divmod(int(rates.argmin()), len(self.members))
+        return float(rates[point, member]), self.members[member].name
+
+    def _rates(self, size_t: Array) -> Array:
+        """The rate that each member allows, a row for each, at magnitudes of the field."""
+        return np.array([member.rate_t_per_s(size_t) for member in self.members])
+
+    @cached_property
+    def _edges_t(self) -> tuple[float, ...]:
+        """Every edge, and the field just beyond it: an edge belongs to the zone below it."""
+        edges = [edge for member in self.members for edge in member.edges_t]
+        return tuple(side for edge in edges for side in (edge, math.nextafter(edge, math.inf)))
 
 
 def magnet_table(magnet: Magnet) -> Ceiling:
