@@ -14,8 +14,10 @@ def test_a_quick_run_prints_one_object_with_figures_and_ratios() -> None:
     result = json.loads(run("--quick", "--json", "forecast").stdout)
     assert set(result["machine"]) >= {"python", "system", "cores"}
     outcome = result["results"]["forecast"]
-    assert outcome["figures"]["forecast of overnight-ladder, planning, s"] > 0
-    assert outcome["ratios"]
+    planning = outcome["figures"]["forecast of overnight-ladder, planning, s"]
+    assert planning["value"] > 0
+    assert planning["spread"] >= 0
+    assert outcome["ratios"]["forecast night s / planning s"]["value"] > 0
 
 
 def test_a_benchmark_that_there_is_not_is_refused_by_name() -> None:

@@ -6,8 +6,11 @@ import json
 import os
 import platform
 import sys
+from dataclasses import asdict
+from importlib.metadata import version
 from typing import Any
 
+LIBRARIES = ("numpy", "scipy", "pydantic", "pyvisa", "pyvisa-py", "pyvisa-sim")
 NAMES = ("model", "link", "ledger", "analysis", "forecast", "night")
 
 
@@ -15,6 +18,7 @@ def machine() -> dict[str, Any]:
     """What the figures belong to."""
     return {
         "python": platform.python_version(),
+        **{name: version(name) for name in LIBRARIES},
         "system": f"{platform.system()} {platform.machine()}",
         "cores": os.cpu_count(),
         "load": os.getloadavg()[0] if hasattr(os, "getloadavg") else None,
@@ -39,7 +43,7 @@ def main() -> None:
     results = {}
     for name in options.names or NAMES:
         outcome = importlib.import_module(f"tests.bench.{name}").run(options.quick)
-        results[name] = {"figures": outcome.figures, "ratios": outcome.ratios}
+        results[name] = asdict(outcome)
         if not options.json:
             print(name, *outcome.lines(), sep="\n", flush=True)
     if options.json:

@@ -22,7 +22,7 @@ def run(quick: bool) -> Outcome:
     outcome = Outcome()
     for name, sweeps in ways.items():
         points = sweeps[0].field_t.size
-        outcome.figures[f"analysis of {name} sweeps of {points} points, s"] = spent[name].median_s
-        ratio = points / spent[name].median_s  # a point a second
+        outcome.figures[f"analysis of {name} sweeps of {points} points, s"] = spent[name].seconds()
+        ratio = spent[name].into(points)  # a point a second
         outcome.ratios[f"time of one sweep / analysis of {name} sweeps"] = ratio
     return outcome

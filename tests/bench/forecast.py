@@ -30,6 +30,6 @@ def run(quick: bool) -> Outcome:
     )
     night_s = forecast(files.rig, files.sequence).duration_s
     return Outcome(
-        {f"forecast of overnight-ladder, {name}, s": one.median_s for name, one in spent.items()},
-        {"forecast night s / planning s": night_s / spent["planning"].median_s},
+        {f"forecast of overnight-ladder, {name}, s": one.seconds() for name, one in spent.items()},
+        {"forecast night s / planning s": spent["planning"].into(night_s)},
     )

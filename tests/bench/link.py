@@ -89,6 +89,9 @@ def run(quick: bool) -> Outcome:
                 "link in a thread, socket": lambda: link_queries(manager, address, count, False),
                 "link inline, socket": lambda: link_queries(manager, address, count, True),
                 "bare PyVISA, pyvisa-sim": lambda: visa_queries(simulated, SIMULATED, count),
+                "link in a thread, pyvisa-sim": lambda: link_queries(
+                    simulated, SIMULATED, count, False
+                ),
                 "link inline, pyvisa-sim": lambda: link_queries(simulated, SIMULATED, count, True),
             },
             rounds,
@@ -101,8 +104,9 @@ def run(quick: bool) -> Outcome:
         ("link in a thread, socket", "bare PyVISA, socket"),
         ("link inline, socket", "bare PyVISA, socket"),
         ("bare PyVISA, socket", "bare socket"),
+        ("link in a thread, pyvisa-sim", "bare PyVISA, pyvisa-sim"),
         ("link inline, pyvisa-sim", "bare PyVISA, pyvisa-sim"),
     ]
     for name, over in pairs:
-        outcome.ratios[f"{name} / {over}"] = spent[name].median_s / spent[over].median_s
+        outcome.ratios[f"{name} / {over}"] = spent[name].over(spent[over])
     return outcome

@@ -8,6 +8,8 @@ from orchestrator.cli.composition import load_files, load_simulated, shipped
 from orchestrator.cli.full_speed import at_full_speed
 from orchestrator.ledger.reading import NightReader
 from tests.bench.outcome import Outcome
+from tests.bench.rooms import looked_at
+from tests.bench.timing import Figure
 
 
 def run(quick: bool) -> Outcome:
@@ -16,22 +18,26 @@ def run(quick: bool) -> Outcome:
     files = load_files(None, shipped(f"{name}.toml"))
     with tempfile.TemporaryDirectory() as place:
         began_s = time.perf_counter()
-        folder, done = at_full_speed(
-            files,
-            load_simulated(None, files.rig),
-            seed=20,
-            into=Path(place),
-            evening_unix_s=946_756_800.0,
-            quiet=True,
-        )
+        with looked_at() as looks:
+            folder, done = at_full_speed(
+                files,
+                load_simulated(None, files.rig),
+                seed=20,
+                into=Path(place),
+                evening_unix_s=946_756_800.0,
+                quiet=True,
+            )
         wall_s = time.perf_counter() - began_s
         with NightReader(folder) as night:
             readings = night.last_number()
-    return Outcome(
+    outcome = Outcome(
         {
-            f"{name}, simulated s": done.duration_s,
-            f"{name}, wall s": wall_s,
-            f"{name}, readings per wall s": readings / wall_s,
+            f"{name}, simulated s": Figure(done.duration_s),
+            f"{name}, wall s": Figure(wall_s),
+            f"{name}, readings per wall s": Figure(readings / wall_s),
         },
-        {f"{name}, simulated s per wall s": done.duration_s / wall_s},
+        {f"{name}, simulated s per wall s": Figure(done.duration_s / wall_s)},
     )
+    for room, count in looks.most_common():
+        outcome.figures[f"of it in {room}, %"] = Figure(100 * count / looks.total())
+    return outcome

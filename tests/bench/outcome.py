@@ -2,17 +2,24 @@
 
 from dataclasses import dataclass, field
 
+from tests.bench.timing import Figure
+
 
 @dataclass
 class Outcome:
     """Figures and ratios by name; a figure's name ends in its unit."""
 
-    figures: dict[str, float] = field(default_factory=dict)
-    ratios: dict[str, float] = field(default_factory=dict)
+    figures: dict[str, Figure] = field(default_factory=dict)
+    ratios: dict[str, Figure] = field(default_factory=dict)
 
     def lines(self) -> list[str]:
         """For people."""
         return [
-            *(f"  {name:<58} {value:>12.4g}" for name, value in self.figures.items()),
-            *(f"  {name:<58} {value:>11.2f} x" for name, value in self.ratios.items()),
+            *(_line(name, one, "") for name, one in self.figures.items()),
+            *(_line(name, one, " x") for name, one in self.ratios.items()),
         ]
+
+
+def _line(name: str, figure: Figure, unit: str) -> str:
+    spread = "" if figure.spread is None else f" ± {figure.spread:.3g}"
+    return f"  {name:<58} {figure.value:>10.4g}{spread}{unit}"

@@ -2,20 +2,49 @@
 
 import statistics
 import time
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 
 
 @dataclass(frozen=True, slots=True)
+class Figure:
+    """Median over the rounds, and half of what the middle half of them spans; None for one."""
+
+    value: float
+    spread: float | None = None
+
+    @classmethod
+    def of(cls, values: Sequence[float]) -> "Figure":
+        """Of one value a round."""
+        ordered = sorted(values)
+        quarter = len(ordered) // 4
+        middle = ordered[quarter : len(ordered) - quarter]
+        spread = (middle[-1] - middle[0]) / 2 if len(ordered) > 1 else None
+        return cls(statistics.median(ordered), spread)
+
+
+@dataclass(frozen=True, slots=True)
 class Spent:
-    """Median time of one piece of work, and the half-width of the middle half of the rounds."""
+    """Seconds that one way took in each round."""
 
-    median_s: float
-    spread_s: float
+    rounds_s: tuple[float, ...]
 
-    def per(self, count: int, scale: float = 1e6) -> float:
-        """Time of one of ``count`` in a round; microseconds unless told otherwise."""
-        return self.median_s / count * scale
+    def seconds(self) -> Figure:
+        """Of a round."""
+        return Figure.of(self.rounds_s)
+
+    def per(self, count: int) -> Figure:
+        """Microseconds of one of ``count`` in a round."""
+        return Figure.of([1e6 * seconds / count for seconds in self.rounds_s])
+
+    def over(self, other: "Spent") -> Figure:
+        """Ratio to another way in the same round."""
+        pairs = zip(self.rounds_s, other.rounds_s, strict=True)
+        return Figure.of([mine / theirs for mine, theirs in pairs])
+
+    def into(self, seconds: float) -> Figure:
+        """How often it fits into a time."""
+        return Figure.of([seconds / one for one in self.rounds_s])
 
 
 def in_turn(ways: Mapping[str, Callable[[], float]], rounds: int) -> dict[str, Spent]:
@@ -29,7 +58,7 @@ def in_turn(ways: Mapping[str, Callable[[], float]], rounds: int) -> dict[str, S
             seconds = work()
             if number:
                 times[name].append(seconds)
-    return {name: _spent(values) for name, values in times.items()}
+    return {name: Spent(tuple(values)) for name, values in times.items()}
 
 
 def timed(work: Callable[[], object]) -> Callable[[], float]:
@@ -41,10 +70,3 @@ def timed(work: Callable[[], object]) -> Callable[[], float]:
         return time.perf_counter() - began_s
 
     return way
-
-
-def _spent(values: list[float]) -> Spent:
-    ordered = sorted(values)
-    quarter = len(ordered) // 4
-    middle = ordered[quarter : len(ordered) - quarter]
-    return Spent(statistics.median(ordered), (middle[-1] - middle[0]) / 2)
