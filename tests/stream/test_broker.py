@@ -129,6 +129,11 @@ def test_readings_events_and_alarms_arrive_in_order_without_gaps(
         ledger.append_event(kind="step", name="up")
         ledger.append_event(kind="trip", name="helium_low", severity="high", data={"margin": 0.0})
         await early.until(lambda: len(early.numbers()) >= 450 and len(early.of_kind("alarm")) == 1)
+        # The retained state says what is new from now on; it is sent every few seconds.
+        publisher.update(NightState(step="up", step_number=1, step_count=3))
+        await early.until(
+            lambda: any(one.last_reading == 450 for one in early.of_kind("state"))  # type: ignore[attr-defined]
+        )
         late = Listening(broker.port, "in-order")
         fresh = Listening(broker.port, "in-order", from_start=False)
         await late.until(lambda: len(late.numbers()) >= 450 and len(late.of_kind("event")) == 2)
