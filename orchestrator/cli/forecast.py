@@ -11,6 +11,9 @@ if TYPE_CHECKING:
     from orchestrator.planning.forecast import Forecast
 
 
+_WIDE = 76  # characters; a narrower terminal goes without the samples of a period
+
+
 def forecast(sequence: SequencePath = None, rig: RigPath = None, as_json: AsJson = False) -> None:
     """Say how long a night will take, and what limits each sweep; no instrument is touched.
 
@@ -27,7 +30,7 @@ def forecast(sequence: SequencePath = None, rig: RigPath = None, as_json: AsJson
     if as_json:
         print(json.dumps(_as_json(expected, warnings), indent=2))
         return
-    _show(files.sequence.about.name, expected, warnings)
+    _show(f"{files.sequence.about.name} on {files.rig.about.name}", expected, warnings)
 
 
 def _as_json(expected: "Forecast", warnings: list[str]) -> dict[str, Any]:
@@ -49,11 +52,13 @@ def _show(name: str, expected: "Forecast", warnings: list[str]) -> None:
     from orchestrator.units import duration_text
 
     console = Console()
+    wide = console.width >= _WIDE
     table = Table(title=f"Forecast of {name}", title_justify="left", box=SIMPLE)
+    table.show_edge, table.pad_edge, table.collapse_padding = False, False, True
     table.add_column("step", no_wrap=True)
-    for heading in ("starts at", "takes", "per period"):
+    for heading in ("starts at", "takes", *(["per period"] if wide else [])):
         table.add_column(heading, justify="right", no_wrap=True)
-    table.add_column("limited by")
+    table.add_column("limited by", overflow="fold")
     for step in expected.steps:
         shares = sorted(step.binding.items(), key=lambda item: -item[1])
         binding = "\n".join(f"{100 * share:.0f} % {who}" for who, share in shares if share > 0.005)
@@ -62,11 +67,13 @@ def _show(name: str, expected: "Forecast", warnings: list[str]) -> None:
             step.name,
             duration_text(step.start_s),
             duration_text(step.duration_s),
-            "" if least is None else f"{least:.1f}",
+            *(["" if least is None else f"{least:.1f}"] if wide else []),
             binding,
         )
     console.print(table)
-    console.print("per period: least number of samples in the shortest period predicted\n")
+    if wide:
+        console.print("\nper period: least number of samples in the shortest period predicted")
+    console.print()
     console.print(
         f"The night takes {duration_text(expected.duration_s)}. At one constant rate, with the "
         "same samples per period, it would take "

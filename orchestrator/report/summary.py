@@ -11,8 +11,10 @@ from rich.text import Text
 
 from orchestrator.ledger.reading import NightReader
 from orchestrator.report.checker import check_night
+from orchestrator.report.numbers import ONE_SD, with_uncertainty
 from orchestrator.units import duration_text
 
+_TRUE = ("frequency_t", "mass", "dingle_k")
 _FINDING_KEYS = ("frequency_t", "frequency_sd_t", "mass", "mass_sd", "dingle_k", "dingle_sd_k")
 
 
@@ -73,6 +75,7 @@ def closing_table(summary: Summary) -> RenderableType:
     table = Table(title=_title(summary), title_justify="left", box=SIMPLE)
     for heading in ("orbit", "F / T", "mass / m_e", "T_D / K"):
         table.add_column(heading, justify="right", no_wrap=True)
+    missed = list(summary.truth or [])
     for number, found in enumerate(summary.findings, 1):
         pairs = (
             ("frequency_t", "frequency_sd_t"),
@@ -82,11 +85,15 @@ def closing_table(summary: Summary) -> RenderableType:
         values = [with_uncertainty(found[key], found[spread]) for key, spread in pairs]
         table.add_row(str(number), *values)
         if true := _nearest(found, summary.truth):
-            table.add_row("truth", *(f"{true[key]:g}" for key, _ in pairs), style="dim")
+            table.add_row("truth", *(f"{true[key]:g}" for key in _TRUE), style="dim")
+            missed = [one for one in missed if one is not true]
     if not summary.findings:
         table.add_row("none", "-", "-", "-")
+    for true in missed:
+        table.add_row("not found", *(f"{true[key]:g}" for key in _TRUE), style="dim")
     lines = [
-        "F: frequency, T_D: Dingle temperature; uncertainties are one standard deviation",
+        "F: frequency, T_D: Dingle temperature",
+        ONE_SD,
         f"{summary.readings} readings in {duration_text(summary.simulated_s)} of the night, "
         f"{summary.wall_s:.1f} s of wall time",
         f"trips: {', '.join(one['name'] for one in summary.trips) or 'none'}",
@@ -117,14 +124,3 @@ def _nearest(
     ]
     distance = [abs(one["frequency_t"] - found["frequency_t"]) for one in near]
     return near[distance.index(min(distance))] if near else None
-
-
-def with_uncertainty(value: float | None, spread: float | None) -> str:
-    """A value with its standard deviation to two digits: ``412.58 ± 0.11``."""
-    if value is None:
-        return "-"
-    if spread is None or not spread > 0:
-        return f"{value:.6g}"
-    exponent = f"{spread:.1e}".partition("e")[2]
-    digits = max(0, 1 - int(exponent))
-    return f"{value:.{digits}f} ± {spread:.{digits}f}"

@@ -146,7 +146,50 @@ def test_analyse_reads_a_table(tmp_path: Path) -> None:
     found = json.loads(nightfield("analyse", "table.csv", "--json", place=tmp_path).stdout)
     assert found["orbits"][0]["frequency_t"] == pytest.approx(30, rel=0.01)
     assert found["orbits"][0]["mass"] == pytest.approx(0.1, rel=0.05)
-    assert set(found["hall"]) == {"density_m2", "mobility_m2_per_vs"}
+    assert set(found["hall"]) == {
+        "density_m2",
+        "density_sd_m2",
+        "mobility_m2_per_vs",
+        "mobility_sd_m2_per_vs",
+    }
+
+
+def test_a_result_that_cannot_be_written_is_one_message(tmp_path: Path) -> None:
+    """A full disk, or a pipe whose reader has gone, is no fault to show a traceback for."""
+    if not Path("/dev/full").exists():
+        pytest.skip("this system has no /dev/full")
+    with Path("/dev/full").open("w", encoding="utf-8") as full:
+        for words in (("forecast",), ("forecast", "--json"), ("new", "mine")):
+            failed = subprocess.run(
+                [sys.executable, "-m", "orchestrator.cli.main", *words],
+                cwd=tmp_path,
+                stdout=full,
+                stderr=subprocess.PIPE,
+                text=True,
+                check=False,
+                env=_environment(),
+            )
+            assert failed.returncode == 1
+            assert "No space left" in failed.stderr
+            assert "Traceback" not in failed.stderr
+            assert "Exception ignored" not in failed.stderr
+
+
+@pytest.mark.parametrize("columns", ["80", "60"])
+def test_the_forecast_breaks_no_word_on_a_small_terminal(tmp_path: Path, columns: str) -> None:
+    done = subprocess.run(
+        [sys.executable, "-m", "orchestrator.cli.main", "forecast"],
+        cwd=tmp_path,
+        capture_output=True,
+        text=True,
+        check=True,
+        env=_environment() | {"COLUMNS": columns},
+    )
+    assert "on lantern-cellar" in done.stdout
+    assert "…" not in done.stdout
+    assert max(len(line) for line in done.stdout.splitlines()) <= int(columns)
+    if columns == "80":
+        assert "54 % samples per period\n" in done.stdout.replace(" \n", "\n")
 
 
 def test_new_writes_files_that_rehearse_and_writes_nothing_over(tmp_path: Path) -> None:
