@@ -109,7 +109,10 @@ async def _prove_pace(bench: Bench, pace: float) -> None:
 
 @contextmanager
 def _parking_on_interrupt(asked: threading.Event, say: Callable[[str], None]) -> Iterator[None]:
-    """Let the first Ctrl-C, or a request to end, ask the night to park; the second does as ever."""
+    """Let the first Ctrl-C, or a request to end, ask the night to park; the second does as ever.
+
+    A terminal that is closed, or a connection that is cut, ends no night: it goes on without.
+    """
     if threading.current_thread() is not threading.main_thread():
         yield
         return
@@ -123,9 +126,13 @@ def _parking_on_interrupt(asked: threading.Event, say: Callable[[str], None]) ->
 
     for number in signals:
         signal.signal(number, ask)
+    closed = getattr(signal, "SIGHUP", None)  # not on Windows
+    before = None if closed is None else signal.signal(closed, signal.SIG_IGN)
     try:
         yield
     finally:
+        if closed is not None:
+            signal.signal(closed, before)
         for number in signals:
             signal.signal(number, usual[number])
 

@@ -13,7 +13,7 @@ from orchestrator.cli.new import new
 from orchestrator.cli.rehearse import rehearse
 from orchestrator.cli.run import run
 from orchestrator.cli.simulate import simulate
-from orchestrator.cli.telling import tell
+from orchestrator.cli.telling import spell_out_where_needed, tell
 from orchestrator.cli.watch import watch
 
 app = typer.Typer(
@@ -24,6 +24,7 @@ app = typer.Typer(
     no_args_is_help=True,
     add_completion=False,
     pretty_exceptions_enable=False,
+    rich_markup_mode="markdown",  # paragraphs of help are filled to the terminal's width
 )
 for command in (
     new,
@@ -42,6 +43,7 @@ for command in (
 
 def main() -> None:
     """Run the command line; a mistake in a file or a word gives one message and exit code 2."""
+    spell_out_where_needed()
     try:
         try:
             app()

@@ -1,5 +1,6 @@
 """A progress display for a night that runs in the foreground."""
 
+import contextlib
 import math
 import sys
 from types import TracebackType
@@ -42,12 +43,17 @@ class NightProgress:
         error: BaseException | None,
         trace: TracebackType | None,
     ) -> None:
-        self._progress.stop()
+        with contextlib.suppress(OSError, ValueError):
+            self._progress.stop()
 
     def say(self, text: str) -> None:
-        """Say something on standard error, above the bar if there is one."""
+        """Say something on standard error, above the bar if there is one.
+
+        A terminal that has gone is no reason for a night to end: then nothing is said.
+        """
         console = self._progress.console
-        console.print(text, markup=False, highlight=False, soft_wrap=not console.is_terminal)
+        with contextlib.suppress(OSError, ValueError):
+            console.print(text, markup=False, highlight=False, soft_wrap=not console.is_terminal)
 
     def tell(self, reading: Reading) -> None:
         """Show a reading."""
@@ -59,9 +65,10 @@ class NightProgress:
             for value, width in ((reading.values["field_t"], 7), (reading.values["sample_k"], 6))
         )
         of = f"{duration_text(reading.time_s)} of {duration_text(self._expected_s)}"
-        self._progress.update(
-            self._task,
-            description=f"{reading.step:<18}",
-            completed=min(reading.time_s, self._expected_s),
-            state=f"{field} T {sample} K  {of}",
-        )
+        with contextlib.suppress(OSError, ValueError):
+            self._progress.update(
+                self._task,
+                description=f"{reading.step:<18}",
+                completed=min(reading.time_s, self._expected_s),
+                state=f"{field} T {sample} K  {of}",
+            )

@@ -43,8 +43,8 @@ def doing(picture: Picture, times: Times, width: int) -> Lines:
 def _ended(picture: Picture, times: Times, width: int) -> Lines:
     if picture.ended is None:
         return [row("doing", "?")]
-    after = " after its start" if times.start_unix_s is not None else ""
-    ended = f"nothing any more; ended {times.at(picture.ended.unix_s)}{after}"
+    after = "after " if times.start_unix_s is not None else ""
+    ended = f"nothing any more; ended {after}{times.at(picture.ended.unix_s)}"
     parked = picture.not_at_rest
     if not parked:
         at_rest = picture.ended.data.get("parked") == "parked"

@@ -48,8 +48,8 @@ def test_a_request_without_a_reason_is_refused(finished: tuple[Path, str]) -> No
 
 
 @pytest.fixture(scope="module")
-def running(tmp_path_factory: pytest.TempPathFactory) -> Iterator[tuple[Path, Path]]:
-    """A folder with live.toml, and the folder of a night that runs on that rig."""
+def running(tmp_path_factory: pytest.TempPathFactory) -> Iterator[tuple[Path, Path, int]]:
+    """A folder with live.toml, the folder of a night that runs on that rig, and its process."""
     place = tmp_path_factory.mktemp("running")
     (place / "tiny.toml").write_text(SHORT, encoding="utf-8")
     rig = start("simulate", "--write-rig", "live.toml", "--pace", PACE, place=place)
@@ -60,7 +60,7 @@ def running(tmp_path_factory: pytest.TempPathFactory) -> Iterator[tuple[Path, Pa
             assert time.monotonic() < end_s
             time.sleep(0.1)
         night = start("run", "tiny.toml", "--rig", "live.toml", "--pace", PACE, place=place)
-        yield place, wait_for_step(place, "ready", night).parent
+        yield place, wait_for_step(place, "ready", night).parent, night.pid
     finally:
         if night is not None:
             night.kill()
@@ -70,9 +70,9 @@ def running(tmp_path_factory: pytest.TempPathFactory) -> Iterator[tuple[Path, Pa
 
 
 def test_a_second_night_on_the_same_rig_is_refused_and_moves_nothing(
-    running: tuple[Path, Path],
+    running: tuple[Path, Path, int],
 ) -> None:
-    place, night = running
+    place, night, _ = running
     words = ("run", "tiny.toml", "--rig", "live.toml", "--pace", PACE)
     refused = nightfield(*words, place=place, code=2)
     assert "is in use by night" in refused.stderr
@@ -82,8 +82,21 @@ def test_a_second_night_on_the_same_rig_is_refused_and_moves_nothing(
         assert [one.name for one in reader.events() if one.kind == "trip"] == []
 
 
-def test_only_a_trip_that_stands_can_be_acknowledged(running: tuple[Path, Path]) -> None:
-    place, night = running
+@pytest.mark.skipif(os.name != "posix", reason="there is no such signal")
+def test_a_terminal_that_is_closed_ends_no_night(running: tuple[Path, Path, int]) -> None:
+    """A cut connection must not leave a magnet at field with nobody watching."""
+    _, night, process = running
+    os.kill(process, signal.SIGHUP)
+    with NightReader(night) as reader:
+        before, end_s = reader.last_number(), time.monotonic() + 30
+        while reader.last_number() < before + 3:
+            assert time.monotonic() < end_s
+            time.sleep(0.1)
+        assert [one.name for one in reader.events() if one.kind == "trip"] == []
+
+
+def test_only_a_trip_that_stands_can_be_acknowledged(running: tuple[Path, Path, int]) -> None:
+    place, night, _ = running
     nightfield("hold", str(night), "--reason", "filling nitrogen", place=place)
     words = ("acknowledge", str(night), "hould", "--reason", "filled")
     end_s = time.monotonic() + 30

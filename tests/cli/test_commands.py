@@ -192,6 +192,20 @@ def test_the_forecast_breaks_no_word_on_a_small_terminal(tmp_path: Path, columns
         assert "54 % samples per period\n" in done.stdout.replace(" \n", "\n")
 
 
+def test_an_output_without_unicode_gets_signs_spelt_out(tmp_path: Path) -> None:
+    """A locale of plain ASCII is common on the computers beside a cryostat."""
+    done = subprocess.run(
+        [sys.executable, "-m", "orchestrator.cli.main", "forecast"],
+        cwd=tmp_path,
+        capture_output=True,
+        text=True,
+        check=True,
+        env=_environment() | {"PYTHONIOENCODING": "ascii", "LC_ALL": "C"},
+    )
+    assert "29 m^3 of gas" in " ".join(done.stdout.split())
+    assert "?" not in done.stdout
+
+
 def test_new_writes_files_that_rehearse_and_writes_nothing_over(tmp_path: Path) -> None:
     nightfield("new", "mine", place=tmp_path)
     mine = {file.name for file in (tmp_path / "mine").iterdir()}

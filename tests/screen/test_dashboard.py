@@ -206,7 +206,7 @@ def test_a_night_rehearsed_at_full_speed_tells_times_since_its_start() -> None:
     lines = frame(scene, later_s=decades_s)
     assert lines[0].endswith("times since its start")
     told = "0:41:00"  # 660 s of settling and 1800 s of the sweep
-    assert row(lines, "doing").endswith(f"ended {told} after its start; the rig is parked")
+    assert row(lines, "doing").endswith(f"ended after {told}; the rig is parked")
     assert any(line.startswith(f"  {told}  night ended") for line in lines)
     running = frame(sweeping(), later_s=decades_s)
     assert running[0].startswith(" REHEARSAL ")
