@@ -29,6 +29,9 @@ LABEL = "sweep"
 
 _TURN_PART = 0.02  # the field has turned when it came back by this part of the table's range
 _STEP_PART = 0.1  # relative change of temperature that begins another sweep
+# Beyond these a column is in another unit: gauss, or millikelvin.
+_STRONGEST_T = 2000.0
+_WARMEST_K = 400.0
 
 
 class TableError(AnalysisError):
@@ -223,8 +226,14 @@ def _number(path: Path, line: int, name: str, cell: str) -> float:
         value = float(cell)
     except ValueError:
         value = math.nan
-    if not math.isfinite(value) or (name == "temperature_k" and value <= 0):
+    allowed = ""
+    if not math.isfinite(value):
         allowed = "a number above 0" if name == "temperature_k" else "a finite number"
+    elif name == "temperature_k" and not 0 < value <= _WARMEST_K:
+        allowed = f"above 0 to {_WARMEST_K:g}, in kelvin"
+    elif name == "field_t" and abs(value) > _STRONGEST_T:
+        allowed = f"-{_STRONGEST_T:g} to {_STRONGEST_T:g}, in tesla"
+    if allowed:
         raise TableError(
             f'{path}, line {line}, column {name}: "{cell.strip()}", allowed: {allowed}'
         )

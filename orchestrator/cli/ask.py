@@ -11,14 +11,14 @@ from typing import TYPE_CHECKING, Annotated, Literal
 
 import typer
 
-from orchestrator.cli.failing import Failed, input_errors
-from orchestrator.cli.telling import tell
+from orchestrator.cli.failing import NOT_TAKEN_UP, Failed, input_errors
 from orchestrator.units import duration_text
 
 if TYPE_CHECKING:
     from orchestrator.ledger.reading import NightReader
 
-_QUIET_S = 60.0  # readings come every few seconds; an interval may be longer, hence a warning only
+_PATIENCE_S = 10.0
+_LOOK_EVERY_S = 0.2
 
 Night = Annotated[Path, typer.Argument(help="The night's folder.")]
 Reason = Annotated[str, typer.Option(help="Why; it is recorded.")]
@@ -36,7 +36,7 @@ def _ask(
             raise Failed('--reason "" is not allowed: say why; it is recorded')
         with NightReader(night) as reader:
             _refuse_what_nobody_takes_up(reader, kind, name)
-            quiet = _quiet_for(reader)
+            patience_s = max(_PATIENCE_S, 3 * _interval_s(reader))
         number = write_request(
             night,
             kind,
@@ -45,11 +45,15 @@ def _ask(
             person=person or getpass.getuser(),
             unix_s=time.time(),
         )
-    typer.echo(
-        f"request {number} ({kind}) is recorded; the night takes it up with its next reading"
-    )
-    if quiet:
-        tell(f"nightfield: {quiet}")
+        typer.echo(f"request {number} ({kind}) is recorded")
+        if not _taken_up(night, number, patience_s):
+            raise Failed(
+                f"{night}: nobody has taken request {number} up within "
+                f"{duration_text(patience_s)}. If the night's process has died, nobody will: look "
+                "after the magnet at its supply",
+                NOT_TAKEN_UP,
+            )
+    typer.echo("the night has taken it up")
 
 
 def _refuse_what_nobody_takes_up(reader: "NightReader", kind: str, name: str) -> None:
@@ -69,17 +73,24 @@ def _refuse_what_nobody_takes_up(reader: "NightReader", kind: str, name: str) ->
         raise Failed(f'{reader.path.parent}: no trip "{name}" stands there (standing: {stand})')
 
 
-def _quiet_for(reader: "NightReader") -> str:
-    """What to say of a night that has written no reading for long; empty if it has."""
-    newest = reader.readings(reader.last_number() - 1, 1)
-    written_s = newest[0].unix_s if newest else reader.description().started_unix_s
-    age_s = time.time() - written_s
-    if age_s < _QUIET_S:
-        return ""
-    return (
-        f"this night has read nothing for {duration_text(age_s)}; if its process has died, nobody "
-        "takes the request up: look after the magnet at its supply"
-    )
+def _interval_s(reader: "NightReader") -> float:
+    """From one reading to the next, as the night told it at its start; 0 if it did not."""
+    told = [one.data.get("interval_s") for one in reader.events() if one.kind == "night"]
+    return max((float(one) for one in told if isinstance(one, int | float)), default=0.0)
+
+
+def _taken_up(night: Path, number: int, patience_s: float) -> bool:
+    """Wait until the night has taken a request up; False if it does not in time."""
+    from orchestrator.ledger.reading import NightReader
+
+    end_s = time.monotonic() + patience_s
+    while True:
+        with NightReader(night) as reader:
+            if any(one.id == number and one.taken_s is not None for one in reader.requests()):
+                return True
+        if time.monotonic() > end_s:
+            return False
+        time.sleep(_LOOK_EVERY_S)
 
 
 def hold(night: Night, reason: Reason, person: Person = "") -> None:

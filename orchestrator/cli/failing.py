@@ -3,6 +3,7 @@
 from collections.abc import Iterator
 from contextlib import contextmanager
 
+NOT_TAKEN_UP = 1
 BAD_INPUT = 2
 NIGHT_ENDED_EARLY = 3
 INTERRUPTED = 130  # as a shell has it for a process that Ctrl-C ended

@@ -19,8 +19,9 @@ from orchestrator.cli.watch import watch
 app = typer.Typer(
     name="nightfield",
     help="Plan, rehearse, guard, record and analyse an unattended night of quantum oscillations.",
-    epilog="Exit codes: 0 done, 1 a fault of the computer or of this program, 2 something that you "
-    "gave is wrong, 3 the night ended early, 130 stopped by Ctrl-C.",
+    epilog="Exit codes: 0 done, 1 a fault of the computer or of this program, or a request that "
+    "nobody took up, 2 something that you gave is wrong, 3 the night ended early, 130 stopped by "
+    "Ctrl-C.",
     no_args_is_help=True,
     add_completion=False,
     pretty_exceptions_enable=False,

@@ -61,7 +61,7 @@ class NightProgress:
             return
         self._step = reading.step
         field, sample = (
-            f"{value:{width}.3f}" if math.isfinite(value) else f"{'-':>{width}}"
+            f"{round(value, 3) + 0.0:{width}.3f}" if math.isfinite(value) else f"{'-':>{width}}"
             for value, width in ((reading.values["field_t"], 7), (reading.values["sample_k"], 6))
         )
         of = f"{duration_text(reading.time_s)} of {duration_text(self._expected_s)}"

@@ -61,7 +61,9 @@ def verdict(picture: Picture, now_unix_s: float) -> Verdict:
     if picture.outcome == "done":
         return Verdict(Level.OVER, "NIGHT OVER", ("all steps done",))
     if picture.outcome:
-        return Verdict(Level.LOOK, "NIGHT OVER", (f"ended by {picture.outcome}",))
+        stopped = picture.outcome == "stopped"
+        reason = "stopped at the keyboard" if stopped else f"ended by {picture.outcome}"
+        return Verdict(Level.LOOK, "NIGHT OVER", (reason,))
     return _while_it_runs(picture, now_unix_s)
 
 

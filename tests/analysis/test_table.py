@@ -71,7 +71,18 @@ def test_table_gives_orbit_density_and_hall(tmp_path: Path) -> None:
             "field_t,temperature_k,r_ohm\n1,2,3\n\n1,2,x9\n",
             'line 4, column r_ohm: "x9", allowed: a finite number',
         ),
-        ("field_t,temperature_k,r_ohm\n1,-2,3\n", 'column temperature_k: "-2", allowed: a number'),
+        (
+            "field_t,temperature_k,r_ohm\n1,-2,3\n",
+            'column temperature_k: "-2", allowed: above 0 to 400, in kelvin',
+        ),
+        (
+            "field_t,temperature_k,r_ohm\n1,500,3\n",
+            'column temperature_k: "500", allowed: above 0 to 400, in kelvin',
+        ),
+        (
+            "field_t,temperature_k,r_ohm\n30000,2,3\n",
+            'column field_t: "30000", allowed: -2000 to 2000, in tesla',
+        ),
         ("field_t,temperature_k,r_ohm\n1,2,inf\n", 'column r_ohm: "inf"'),
         ("field_t,temperature_k,r_ohm\n1,2,3\n", "1 rows hold no sweep, allowed: 40 rows or more"),
         ("field_t,temperature_k,r_ohm,sweep\n1,2,3,a\n", 'line 2: sweep "a" has 1 rows over 0 T'),

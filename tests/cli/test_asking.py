@@ -97,7 +97,8 @@ def test_a_terminal_that_is_closed_ends_no_night(running: tuple[Path, Path, int]
 
 def test_only_a_trip_that_stands_can_be_acknowledged(running: tuple[Path, Path, int]) -> None:
     place, night, _ = running
-    nightfield("hold", str(night), "--reason", "filling nitrogen", place=place)
+    held = nightfield("hold", str(night), "--reason", "filling nitrogen", place=place)
+    assert "the night has taken it up" in held.stdout
     words = ("acknowledge", str(night), "hould", "--reason", "filled")
     end_s = time.monotonic() + 30
     while "standing: hold" not in nightfield(*words, place=place, code=2).stderr:
@@ -105,6 +106,18 @@ def test_only_a_trip_that_stands_can_be_acknowledged(running: tuple[Path, Path, 
     nightfield("acknowledge", str(night), "hold", "--reason", "filled", place=place)
     with NightReader(night) as reader:
         assert [one.name for one in reader.requests()] == ["", "hold"]
+
+
+def test_a_request_to_a_night_whose_process_has_died_is_told_to_be_in_vain(
+    running: tuple[Path, Path, int],
+) -> None:
+    """The worst thing to be told of a magnet at field is that somebody has seen to it."""
+    place, night, process = running
+    os.kill(process, signal.SIGTERM if os.name == "nt" else signal.SIGKILL)
+    failed = nightfield("park", str(night), "--reason", "storm", place=place, code=1)
+    assert "nobody has taken request 3 up within 10 s" in failed.stderr
+    assert "look after the magnet at its supply" in failed.stderr
+    assert "the night has taken it up" not in failed.stdout
 
 
 def test_a_claim_ends_with_its_night(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
